@@ -1,0 +1,70 @@
+//! Engines: programs that apply the random map. All of them give the same samples.
+//!
+//! The contract is one function, [`Engine::attempt`]. What coupling from the past does with attempts
+//! stands in `coupling` and knows no engine; the plain engine in `plain` is the definition, and
+//! whatever is faster must agree with it bit for bit. Nothing here knows an archive.
+
+pub mod coupling;
+pub mod plain;
+
+use std::sync::Arc;
+use std::sync::atomic::{AtomicBool, Ordering};
+
+use crate::error::{Error, ErrorKind, Result};
+use crate::sample::Configuration;
+use crate::stream::Address;
+
+/// What one attempt gave (`STREAM.md` §6).
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Attempt {
+    /// The lower bound at time 0.
+    pub lower: Configuration,
+    /// The upper bound at time 0.
+    pub upper: Configuration,
+    /// The largest m such that the bounds are equal at all times -m .. 0; `None` if they differ at time 0.
+    pub merged_at: Option<u64>,
+    /// How many words were drawn.
+    pub words: u64,
+}
+
+/// A program that makes attempts for one law.
+pub trait Engine: Sync {
+    /// Starts both bounds at time -2^`depth` and applies epochs `depth` .. 0.
+    ///
+    /// # Errors
+    /// [`ErrorKind::Stopped`] when asked to stop.
+    fn attempt(&self, address: &Address, depth: u8, stop: &Stop) -> Result<Attempt>;
+}
+
+/// A request to stop, seen within one sweep.
+#[derive(Clone, Debug, Default)]
+pub struct Stop(Arc<AtomicBool>);
+
+impl Stop {
+    /// Stops once `flag` is set.
+    pub fn at(flag: Arc<AtomicBool>) -> Self {
+        Self(flag)
+    }
+
+    /// Goes on, or ends with an error.
+    ///
+    /// # Errors
+    /// [`ErrorKind::Stopped`] once a stop was requested.
+    pub fn check(&self) -> Result<()> {
+        if self.0.load(Ordering::Relaxed) {
+            Err(ErrorKind::Stopped.into())
+        } else {
+            Ok(())
+        }
+    }
+}
+
+/// A pool of `count` threads, or of as many as the machine has.
+///
+/// # Errors
+/// [`ErrorKind::Io`] if they cannot be started.
+pub fn threads(count: Option<usize>) -> Result<rayon::ThreadPool> {
+    let pool = rayon::ThreadPoolBuilder::new().num_threads(count.unwrap_or(0));
+    pool.build()
+        .map_err(|error| Error::io("start threads", std::io::Error::other(error)))
+}
