@@ -1,0 +1,9 @@
+//! What the samples are: known answers, exactness against enumeration and published values.
+
+mod exactness;
+mod faults;
+mod properties;
+mod statistics;
+mod systems;
+mod values;
+mod vectors;
