@@ -1,0 +1,8 @@
+//! The program as a user meets it: verbs, exit codes, JSON, interruptions, terminals, the README.
+
+mod bench;
+mod exits;
+mod interrupt;
+mod json;
+mod readme;
+mod verbs;
