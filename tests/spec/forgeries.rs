@@ -18,10 +18,13 @@ use pastproof::audit::replay::{Which, replay};
 use pastproof::audit::seal::{Anchors, audit};
 use pastproof::audit::{Answer, Check, Conclusion};
 use pastproof::engine::Stop;
-use pastproof::engine::coupling::Proof;
+use pastproof::engine::coupling::{Proof, redraw};
+use pastproof::engine::plain::Plain;
 use pastproof::error::{Class, Error, Result};
 use pastproof::observer::Silent;
-use pastproof::quantity::Digest;
+use pastproof::quantity::{Digest, SampleIndex, Seed};
+use pastproof::random_map::RandomMap;
+use pastproof::stream::Address;
 use serde_json::{Value, json};
 
 use crate::forge::{Reseal, Table};
@@ -59,6 +62,8 @@ struct Forgery {
     audit: Caught,
     outside: Outside,
     replay: Caught,
+    /// What a fault of the audit says, with its place.
+    says: &'static str,
 }
 
 /// A forgery that is not noticed, until told otherwise.
@@ -72,6 +77,7 @@ fn forged(what: &'static str, from: &'static str, reseal: Reseal, forge: fn(&mut
         audit: Caught::By(&[]),
         outside: Outside::Seal,
         replay: Caught::By(&[]),
+        says: "",
     }
 }
 
@@ -97,6 +103,11 @@ impl Forgery {
 
     fn outside(mut self, outside: Outside) -> Self {
         self.outside = outside;
+        self
+    }
+
+    fn says(mut self, what: &'static str) -> Self {
+        self.says = what;
         self
     }
 
@@ -166,6 +177,7 @@ fn samples() -> Vec<Forgery> {
             archive.edit_table(|table| flip(table, 5, 11));
         })
         .audit(&["hashes", "observables"])
+        .says("ensembles/0000/samples/0000.npy: ensemble 0: sample 5: magnetisation: recorded")
         .replay(&["samples"]),
         forged(
             "the same, hash, observables, tree and root following",
@@ -217,6 +229,32 @@ fn samples() -> Vec<Forgery> {
         forged("the same, tree and root following", TORUS, Reseal::Trees, |archive| {
             archive.edit_table(|table| table.rows[5].depth += 1);
         })
+        .outside(Outside::Both)
+        .replay(&["depths"]),
+        forged(
+            "a depth raised by one, merged_at that of the longer attempt, tree and root following",
+            TORUS,
+            Reseal::Trees,
+            |archive| {
+                let law = archive.law(0);
+                let map = RandomMap::new(&law).unwrap();
+                let seed = archive.json("record.json")["seed"]
+                    .as_str()
+                    .and_then(Digest::parse)
+                    .unwrap();
+                let address = Address {
+                    seed: Seed(seed),
+                    key: law.key().unwrap(),
+                    sample: SampleIndex(5),
+                };
+                archive.edit_table(|table| {
+                    let row = &mut table.rows[5];
+                    row.depth += 1;
+                    let longer = redraw(&Plain::new(&map), &address, row.depth, Proof::Fast, &Stop::default());
+                    row.merged_at = longer.unwrap().0.merged_at;
+                });
+            },
+        )
         .outside(Outside::Both)
         .replay(&["depths"]),
         forged(
@@ -450,6 +488,7 @@ fn counts() -> Vec<Forgery> {
             archive.edit_record(|record| record["ensembles"][0]["depth_limit"] = json!(40));
         })
         .audit(&["parameters"])
+        .says("record.json: ensemble 0: depth_limit: recorded 40, the plan gives 30")
         .outside(Outside::Both)
         .replay(&["parameters"]),
         forged(
@@ -599,6 +638,7 @@ fn laws_and_seeds() -> Vec<Forgery> {
             },
         )
         .audit(&["parameters"])
+        .says("record.json: ensemble 0: beta: recorded \"3/10\", the plan gives \"1/4\"")
         .outside(Outside::Both)
         .replay(&["parameters", "depths", "samples", "hashes", "observables"]),
         forged(
@@ -635,6 +675,7 @@ fn laws_and_seeds() -> Vec<Forgery> {
             });
         })
         .audit(&["thresholds"])
+        .says("ensembles/0000/map.json: ensemble 0: threshold at local field")
         .replay(&["thresholds"]),
         forged("a threshold left out", TORUS, Reseal::Manifest, |archive| {
             archive.edit_json("ensembles/0000/map.json", |map| {
@@ -796,6 +837,31 @@ fn members() -> Vec<Forgery> {
         })
         .audit(&["manifest"]),
         forged(
+            "the last line of the manifest left out",
+            TORUS,
+            Reseal::Nothing,
+            |archive| {
+                let text = archive.text("MANIFEST.sha256");
+                let last = text.trim_end().rfind('\n').unwrap();
+                let text = text[..=last].to_string();
+                archive.set("MANIFEST.sha256", text);
+            },
+        )
+        .audit(&["manifest"])
+        .says("circumstances.json: stands above the manifest, but is not listed"),
+        forged(
+            "a line of the manifest for a member that is not there",
+            TORUS,
+            Reseal::Nothing,
+            |archive| {
+                let text = archive.text("MANIFEST.sha256");
+                let text = format!("{text}{}  difference.patch\n", Digest::of(b"Larkmoor"));
+                archive.set("MANIFEST.sha256", text);
+            },
+        )
+        .audit(&["manifest"])
+        .says("difference.patch: listed, but not there above the manifest"),
+        forged(
             "the lines of the manifest in another order",
             TORUS,
             Reseal::Nothing,
@@ -806,7 +872,8 @@ fn members() -> Vec<Forgery> {
                 archive.set("MANIFEST.sha256", text);
             },
         )
-        .audit(&["manifest"]),
+        .audit(&["manifest"])
+        .says("MANIFEST.sha256: the lines stand in another order"),
         forged("a manifest that is none", TORUS, Reseal::Nothing, |archive| {
             archive.set("MANIFEST.sha256", *b"see the other one\n");
         })
@@ -845,6 +912,28 @@ fn members() -> Vec<Forgery> {
             },
         )
         .refused("archive.unknown", "unknown member \"notes.txt\""),
+        forged(
+            "a file that the plan does not name",
+            TORUS,
+            Reseal::Manifest,
+            |archive| {
+                let place = archive.place("STREAM.md");
+                archive.0.insert(place, ("inputs/more.csv".into(), b"a,b\n".to_vec()));
+            },
+        )
+        .audit(&["layout"])
+        .says("inputs/more.csv: unknown member"),
+        forged(
+            "a file that the plan does not name, behind the manifest",
+            TORUS,
+            Reseal::Manifest,
+            |archive| {
+                archive.0.push(("inputs/more.csv".into(), b"a,b\n".to_vec()));
+            },
+        )
+        .audit(&["layout"])
+        .outside(Outside::Neither)
+        .says("inputs/more.csv: unknown member"),
         forged("a member added in attest/", TORUS, Reseal::Manifest, |archive| {
             archive
                 .0
@@ -866,11 +955,13 @@ fn members() -> Vec<Forgery> {
             let place = archive.place("record.json");
             archive.0.swap(place, place + 1);
         })
-        .audit(&["layout"]),
+        .audit(&["layout"])
+        .says("found provenance.json, expected record.json in that place"),
         forged("the README removed", TORUS, Reseal::Manifest, |archive| {
             remove(archive, "README.txt")
         })
-        .audit(&["layout"]),
+        .audit(&["layout"])
+        .says("README.txt: the member is missing"),
         forged("the provenance removed", TORUS, Reseal::Manifest, |archive| {
             remove(archive, "provenance.json")
         })
@@ -1221,6 +1312,15 @@ fn differences(forgery: &Forgery, path: &Path) -> Vec<String> {
     };
     let audited = |anchors| {
         let report = audit(path, anchors, &Silent).map(|report| (report.checks, report.conclusion));
+        if let Ok((checks, _)) = &report {
+            let told: Vec<_> = checks
+                .iter()
+                .flat_map(|check| &check.faults)
+                .map(ToString::to_string)
+                .collect();
+            let said = forgery.says.is_empty() || told.iter().any(|fault| fault.contains(forgery.says));
+            assert!(said, "{}: {told:?}", forgery.what);
+        }
         outcome(report, usual)
     };
     let anchors = Anchors {
