@@ -59,7 +59,7 @@ pub const NOT_SHOWN: [&str; 4] = [
     "that the seed was not one of many tried",
     "that the law is the right one for a scientific question, or that the generator behaves as ideal digits would",
     "that this is the file that its author published: compare the root with the printed one",
-    "anything about members that a replay does not read (provenance, circumstances, attest): see audit",
+    "anything about members that a replay does not read (README, STREAM.md, manifest, provenance, circumstances, attest): see audit",
 ];
 
 /// The checks of a replay.
