@@ -1,7 +1,8 @@
 //! A draw that is stopped or killed leaves no file behind that could be taken for an archive.
 
 use std::fs;
-use std::process::{Command, Stdio};
+use std::io::{BufRead, BufReader};
+use std::process::{Child, Command, Stdio};
 use std::thread::sleep;
 use std::time::{Duration, Instant};
 
@@ -17,14 +18,16 @@ fn endless(bench: &Bench) {
     );
 }
 
-fn signal(name: &str, process: u32) {
-    assert!(
-        Command::new("kill")
-            .args([format!("-{name}"), process.to_string()])
-            .status()
-            .unwrap()
-            .success()
-    );
+/// Waits for the caution that comes before the first sample (the signals are listened for by then), then sends one.
+fn signal(name: &str, child: &mut Child) {
+    let mut caution = String::new();
+    let mut err = BufReader::new(child.stderr.as_mut().unwrap());
+    while !caution.contains("below the critical temperature") {
+        assert!(err.read_line(&mut caution).unwrap() > 0, "no caution: {caution}");
+    }
+    sleep(Duration::from_millis(500));
+    let line = format!("kill -{name} {}", child.id());
+    assert!(Command::new("sh").args(["-c", &line]).status().unwrap().success());
 }
 
 /// Code 5, within seconds, and nothing is left.
@@ -34,10 +37,9 @@ fn a_stopped_draw_ends_with_code_5_and_leaves_nothing() {
         let bench = Bench::new();
         endless(&bench);
         let mut command = bench.command(&["draw", "plan.toml", "-o", "x.tar.zst"]);
-        let child = command.stdout(Stdio::piped()).stderr(Stdio::piped()).spawn().unwrap();
-        sleep(Duration::from_millis(700));
+        let mut child = command.stdout(Stdio::piped()).stderr(Stdio::piped()).spawn().unwrap();
+        signal(name, &mut child);
         let asked = Instant::now();
-        signal(name, child.id());
         let ended = ended(child.wait_with_output().unwrap());
         assert!(asked.elapsed() < Duration::from_secs(5));
         assert_eq!(ended.code, 5, "{}", ended.err);
@@ -54,11 +56,10 @@ fn a_killed_draw_does_not_touch_the_file_it_would_replace() {
     fs::write(bench.path("x.tar.zst"), "precious").unwrap();
     let mut child = bench
         .command(&["draw", "plan.toml", "-o", "x.tar.zst", "--force"])
-        .stderr(Stdio::null())
+        .stderr(Stdio::piped())
         .spawn()
         .unwrap();
-    sleep(Duration::from_millis(700));
-    signal("KILL", child.id());
+    signal("KILL", &mut child);
     child.wait().unwrap();
     assert_eq!(fs::read_to_string(bench.path("x.tar.zst")).unwrap(), "precious");
     assert_eq!(bench.names(), ["plan.toml", "x.tar.zst"]);
