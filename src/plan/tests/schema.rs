@@ -2,34 +2,15 @@
 
 use super::*;
 
-/// TOML as JSON, value by value, as the schema means it.
-fn as_json(value: &toml::de::DeValue<'_>) -> Value {
-    use toml::de::DeValue;
-    match value {
-        DeValue::String(text) => json!(text),
-        DeValue::Integer(number) => json!(i64::from_str_radix(number.as_str(), number.radix()).unwrap()),
-        DeValue::Float(number) => json!(number.as_str().parse::<f64>().unwrap()),
-        DeValue::Boolean(truth) => json!(truth),
-        DeValue::Datetime(moment) => json!(moment.to_string()),
-        DeValue::Array(items) => items.iter().map(|item| as_json(item.get_ref())).collect(),
-        DeValue::Table(table) => {
-            let entries = table
-                .iter()
-                .map(|(key, value)| (key.get_ref().to_string(), as_json(value.get_ref())));
-            Value::Object(entries.collect())
-        }
-    }
-}
+#[path = "../../../tests/spec/toml_json.rs"]
+mod toml_json;
 
 #[test]
 fn the_schema_takes_good_plans_and_refuses_wrong_ones() {
     let schema: Value = serde_json::from_str(include_str!("../../../schema/plan.schema.json")).unwrap();
     assert!(jsonschema::meta::is_valid(&schema));
     let schema = jsonschema::draft202012::new(&schema).unwrap();
-    let valid = |text: &str| {
-        let table = toml::de::DeTable::parse(text).unwrap().into_inner();
-        schema.is_valid(&as_json(&toml::de::DeValue::Table(table)))
-    };
+    let valid = |text: &str| schema.is_valid(&toml_json::toml_as_json(text));
     let files: Files<'_> = &[
         ("bonds.csv", b"a,b\n"),
         ("sites.csv", b"a\nb\nc\n"),
