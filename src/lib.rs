@@ -46,7 +46,7 @@
 //!     sample: SampleIndex(7),
 //! };
 //! let map = RandomMap::new(&law)?;
-//! let sample = coupling::draw(&Plain::new(&map), &address, 0, 30, &Stop::default())?;
+//! let sample = coupling::draw(&mut Plain::new(&map), &address, 0, 30, &Stop::default())?;
 //!
 //! assert!(sample.exact().is_some(), "the bounds met within 2^30 sweeps");
 //! assert_eq!(sample.depth, 6);

@@ -6,16 +6,15 @@
 //! its own, so that a reader sees what is wrong: parameters, keys, thresholds, tree, depths, samples,
 //! hashes, observables.
 
-use rayon::prelude::*;
-
 use crate::archive::layout;
 use crate::archive::reading::{Run, sample_place};
 use crate::archive::table::{Outcome as Recorded, Row};
 use crate::audit::ensemble::{Checked, check_parameters};
 use crate::audit::{Answer, Check, Conclusion, Fault, conclude, count};
+use crate::engine::Engine;
 use crate::engine::Stop;
 use crate::engine::coupling::{self, Proof};
-use crate::engine::plain::Plain;
+use crate::engine::crew::{Crew, Settings};
 use crate::error::Result;
 use crate::observer::Observer;
 use crate::quantity::{Digest, EnsembleIndex, SampleIndex, Seed};
@@ -110,12 +109,12 @@ pub fn replay(
     run: &Run,
     which: Which,
     proof: Proof,
-    threads: Option<usize>,
+    settings: &Settings,
     observer: &dyn Observer,
     stop: &Stop,
 ) -> Result<Report> {
     let redraw = Redraw {
-        pool: crate::engine::threads(threads)?,
+        pool: settings.pool()?,
         seed: Seed(run.record().seed),
         proof,
         observer,
@@ -135,10 +134,11 @@ pub fn replay(
         let checked = Checked::new(run, *ensemble, &mut checks.keys, &mut checks.thresholds)?;
         thresholds += checked.map.thresholds().len();
         let columns = &checked.columns;
+        let crew = Crew::new(&checked.map, settings);
         match which {
             Which::One(_, sample) => {
                 let row = run.row(*ensemble, sample, columns)?;
-                redraw.block(run, &checked, std::slice::from_ref(&row), &mut checks)?;
+                redraw.block(run, &checked, &crew, std::slice::from_ref(&row), &mut checks)?;
                 replayed += 1;
                 unfinished += u64::from(row.exact_row().is_none());
                 shown = Some(row);
@@ -157,7 +157,7 @@ pub fn replay(
                     if seen > planned {
                         break;
                     }
-                    redraw.block(run, &checked, &block, &mut checks)?;
+                    redraw.block(run, &checked, &crew, &block, &mut checks)?;
                     replayed += block.len() as u64;
                     unfinished += block.iter().filter(|row| row.exact_row().is_none()).count() as u64;
                 }
@@ -228,7 +228,14 @@ struct Redraw<'a> {
 
 impl Redraw<'_> {
     /// Replays rows side by side; the faults stand in the order of the rows.
-    fn block(&self, run: &Run, checked: &Checked<'_>, rows: &[Row], checks: &mut Checks) -> Result<()> {
+    fn block(
+        &self,
+        run: &Run,
+        checked: &Checked<'_>,
+        crew: &Crew<'_>,
+        rows: &[Row],
+        checks: &mut Checks,
+    ) -> Result<()> {
         let sites = checked.law.lattice().sites();
         let mut stored = Vec::with_capacity(rows.len());
         for row in rows {
@@ -249,8 +256,8 @@ impl Redraw<'_> {
                     .transpose()?,
             );
         }
-        let (map, key, limit) = (&checked.map, checked.key, checked.record.depth_limit);
-        let one = |row: &Row| {
+        let (key, limit) = (checked.key, checked.record.depth_limit);
+        let one = |engine: &mut dyn Engine, row: &Row| {
             if row.depth > limit {
                 return Ok(None);
             }
@@ -259,13 +266,11 @@ impl Redraw<'_> {
                 key,
                 sample: row.index,
             };
-            let redrawn = coupling::redraw(&Plain::new(map), &address, row.depth, self.proof, self.stop)?;
+            let redrawn = coupling::redraw(engine, &address, row.depth, self.proof, self.stop)?;
             self.observer.advance(1);
             Ok(Some(redrawn))
         };
-        let redrawn = self
-            .pool
-            .install(|| rows.par_iter().with_max_len(1).map(one).collect::<Result<Vec<_>>>())?;
+        let redrawn = self.pool.install(|| crew.each(rows, one))?;
         for ((row, bytes), redrawn) in rows.iter().zip(stored).zip(redrawn) {
             compare(checked, row, bytes.as_deref(), redrawn, checks);
         }

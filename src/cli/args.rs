@@ -3,6 +3,7 @@
 use std::path::PathBuf;
 
 use clap::{Args, Parser, Subcommand};
+use pastproof::engine::crew::{Choice, Settings};
 use pastproof::quantity::{Digest, EnsembleIndex, SampleIndex};
 
 /// Exact samples of lattice and graph models, sealed so that anyone can redraw them bit for bit.
@@ -63,9 +64,8 @@ pub struct Draw {
     /// Archive to write [default: the plan's title, here]
     #[arg(short, long, value_name = "FILE")]
     pub output: Option<PathBuf>,
-    /// Threads [default: as many as the machine has]
-    #[arg(long, value_name = "N", value_parser = threads)]
-    pub threads: Option<usize>,
+    #[command(flatten)]
+    pub work: Work,
     /// First try 2^K sweeps; changes no sample, only time
     #[arg(long, value_name = "K", value_parser = clap::value_parser!(u8).range(0..=62))]
     pub first_depth: Option<u8>,
@@ -81,6 +81,31 @@ pub struct Draw {
     /// Answer in JSON (schema/draw.schema.json)
     #[arg(long)]
     pub json: bool,
+}
+
+/// How the work is done; none of it changes a result.
+#[derive(Args, Debug)]
+pub struct Work {
+    /// Threads [default: as many as the machine has]
+    #[arg(long, value_name = "N", value_parser = threads)]
+    pub threads: Option<usize>,
+    /// Engine: plain is the definition, and slow
+    #[arg(long, value_name = "NAME", value_parser = choice, default_value = "automatic")]
+    pub engine: Choice,
+    /// Memory for kept maps, as in 512MiB or 4GiB
+    #[arg(long, value_name = "SIZE", value_parser = size, default_value = "1GiB")]
+    pub memory: u64,
+}
+
+impl Work {
+    /// As the library wants it.
+    pub fn settings(&self) -> Settings {
+        Settings {
+            engine: self.engine,
+            memory: self.memory,
+            threads: self.threads,
+        }
+    }
 }
 
 #[derive(Args, Debug)]
@@ -105,9 +130,8 @@ pub struct Replay {
     /// Skip the shorter attempt, which must fail
     #[arg(long)]
     pub fast: bool,
-    /// Threads [default: as many as the machine has]
-    #[arg(long, value_name = "N", value_parser = threads)]
-    pub threads: Option<usize>,
+    #[command(flatten)]
+    pub work: Work,
     /// Answer in JSON (schema/replay.schema.json)
     #[arg(long)]
     pub json: bool,
@@ -133,6 +157,26 @@ fn threads(text: &str) -> Result<usize, String> {
         Ok(count @ 1..=1024) => Ok(count),
         _ => Err("expected 1 to 1024".into()),
     }
+}
+
+fn choice(text: &str) -> Result<Choice, String> {
+    match text {
+        "automatic" => Ok(Choice::Automatic),
+        "plain" => Ok(Choice::Plain),
+        _ => Err("expected automatic or plain".into()),
+    }
+}
+
+/// A size in bytes with a binary prefix (IEC 80000-13).
+fn size(text: &str) -> Result<u64, String> {
+    let units = [("GiB", 30), ("MiB", 20), ("KiB", 10), ("B", 0)];
+    let parsed = units.iter().find_map(|(unit, power)| {
+        let count: u64 = text.strip_suffix(unit)?.trim_end().parse().ok()?;
+        count.checked_mul(1 << power)
+    });
+    parsed
+        .or_else(|| (text == "0").then_some(0))
+        .ok_or_else(|| "expected a size such as 512MiB or 4GiB".into())
 }
 
 fn address(text: &str) -> Result<(EnsembleIndex, SampleIndex), String> {

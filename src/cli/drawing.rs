@@ -10,6 +10,7 @@ use pastproof::audit::seal::{self, Anchors};
 use pastproof::audit::{Check, Conclusion, replay};
 use pastproof::engine::Stop;
 use pastproof::engine::coupling::Proof;
+use pastproof::engine::crew::Settings;
 use pastproof::error::{Error, ErrorKind, Result};
 use pastproof::observer::Observer;
 use pastproof::plan::{self, Plan, slug};
@@ -91,7 +92,7 @@ pub fn draw(request: &args::Draw, terminal: &Terminal, stop: &Stop) -> Result<Ex
         first_depth: request.first_depth,
         output: &output,
         existing,
-        threads: request.threads,
+        settings: request.work.settings(),
         provenance: wire::Provenance {
             provenance: wire::PROVENANCE.into(),
             program: program(),
@@ -109,7 +110,15 @@ pub fn draw(request: &args::Draw, terminal: &Terminal, stop: &Stop) -> Result<Ex
         let progress = Shown(terminal.progress(total));
         draw::draw(&drawing, &Watch(Instant::now()), &progress, stop)?
     };
-    let answer = Answer::new(&plan, seed, &sealed, cautions, request.plan.is_none(), stop)?;
+    let answer = Answer::new(
+        &plan,
+        seed,
+        &sealed,
+        cautions,
+        request.plan.is_none(),
+        &drawing.settings,
+        stop,
+    )?;
     answer.print(&plan, &sealed, terminal)?;
     Ok(match answer.conclusion {
         Conclusion::Fails => Exit::Machine,
@@ -262,6 +271,7 @@ impl Answer {
         sealed: &Sealed,
         cautions: Vec<examine::Caution>,
         replays: bool,
+        settings: &Settings,
         stop: &Stop,
     ) -> Result<Self> {
         let anchors = Anchors {
@@ -276,7 +286,7 @@ impl Answer {
                 &run,
                 replay::Which::All,
                 Proof::Full,
-                None,
+                settings,
                 &pastproof::observer::Silent,
                 stop,
             )?;

@@ -162,7 +162,7 @@ pub fn replay(request: &args::Replay, terminal: &Terminal, stop: &Stop) -> Resul
     };
     let report = {
         let progress = Shown(terminal.progress(total));
-        replay::replay(&run, which, proof, request.threads, &progress, stop)?
+        replay::replay(&run, which, proof, &request.work.settings(), &progress, stop)?
     };
     let sample = report
         .sample

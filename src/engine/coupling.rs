@@ -16,7 +16,13 @@ use crate::stream::Address;
 ///
 /// # Errors
 /// [`crate::error::ErrorKind::Stopped`] when asked to stop.
-pub fn draw(engine: &dyn Engine, address: &Address, first_depth: u8, depth_limit: u8, stop: &Stop) -> Result<Sample> {
+pub fn draw(
+    engine: &mut dyn Engine,
+    address: &Address,
+    first_depth: u8,
+    depth_limit: u8,
+    stop: &Stop,
+) -> Result<Sample> {
     let mut depth = first_depth.min(depth_limit);
     let mut attempt = engine.attempt(address, depth, stop)?;
     if attempt.merged_at.is_some() {
@@ -75,7 +81,13 @@ pub enum Proof {
 ///
 /// # Errors
 /// [`crate::error::ErrorKind::Stopped`] when asked to stop.
-pub fn redraw(engine: &dyn Engine, address: &Address, depth: u8, proof: Proof, stop: &Stop) -> Result<(Sample, bool)> {
+pub fn redraw(
+    engine: &mut dyn Engine,
+    address: &Address,
+    depth: u8,
+    proof: Proof,
+    stop: &Stop,
+) -> Result<(Sample, bool)> {
     let attempt = engine.attempt(address, depth, stop)?;
     let met = attempt.merged_at.is_some();
     let smaller_met = match proof {

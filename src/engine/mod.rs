@@ -2,15 +2,17 @@
 //!
 //! The contract is one function, [`Engine::attempt`]. What coupling from the past does with attempts
 //! stands in `coupling` and knows no engine; the plain engine in `plain` is the definition, and
-//! whatever is faster must agree with it bit for bit. Nothing here knows an archive.
+//! whatever is faster must agree with it bit for bit. Which one works on a law, and how threads
+//! share the work, is decided in `crew` alone. Nothing here knows an archive.
 
 pub mod coupling;
+pub mod crew;
 pub mod plain;
 
 use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, Ordering};
 
-use crate::error::{Error, ErrorKind, Result};
+use crate::error::{ErrorKind, Result};
 use crate::sample::Configuration;
 use crate::stream::Address;
 
@@ -27,13 +29,14 @@ pub struct Attempt {
     pub words: u64,
 }
 
-/// A program that makes attempts for one law.
-pub trait Engine: Sync {
+/// A program that makes attempts for one law, one after the other. What it keeps between attempts
+/// (parts of the random map, buffers) may save work and never changes a result.
+pub trait Engine: Send {
     /// Starts both bounds at time -2^`depth` and applies epochs `depth` .. 0.
     ///
     /// # Errors
     /// [`ErrorKind::Stopped`] when asked to stop.
-    fn attempt(&self, address: &Address, depth: u8, stop: &Stop) -> Result<Attempt>;
+    fn attempt(&mut self, address: &Address, depth: u8, stop: &Stop) -> Result<Attempt>;
 }
 
 /// A request to stop, seen within one sweep.
@@ -57,14 +60,4 @@ impl Stop {
             Ok(())
         }
     }
-}
-
-/// A pool of `count` threads, or of as many as the machine has.
-///
-/// # Errors
-/// [`ErrorKind::Io`] if they cannot be started.
-pub fn threads(count: Option<usize>) -> Result<rayon::ThreadPool> {
-    let pool = rayon::ThreadPoolBuilder::new().num_threads(count.unwrap_or(0));
-    pool.build()
-        .map_err(|error| Error::io("start threads", std::io::Error::other(error)))
 }

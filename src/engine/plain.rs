@@ -90,7 +90,7 @@ fn bound<'b>(rising: bool, with: &'b [bool], against: &'b [bool]) -> &'b [bool] 
 }
 
 impl Engine for Plain<'_> {
-    fn attempt(&self, address: &Address, depth: u8, stop: &Stop) -> Result<Attempt> {
+    fn attempt(&mut self, address: &Address, depth: u8, stop: &Stop) -> Result<Attempt> {
         let sites = self.map.sites() as usize;
         let mut lower = vec![false; sites];
         let mut upper = vec![true; sites];

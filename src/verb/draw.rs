@@ -11,8 +11,6 @@ use std::ops::Range;
 use std::path::{Path, PathBuf};
 use std::time::Duration;
 
-use rayon::prelude::*;
-
 use crate::archive::container::Writer;
 use crate::archive::layout;
 use crate::archive::manifest::Manifest;
@@ -21,9 +19,10 @@ use crate::archive::readme;
 use crate::archive::table::{Columns, Outcome, Row};
 use crate::archive::wire;
 use crate::canonical;
+use crate::engine::Engine;
 use crate::engine::Stop;
 use crate::engine::coupling;
-use crate::engine::plain::Plain;
+use crate::engine::crew::{Crew, Settings};
 use crate::error::{Error, ErrorKind, Result};
 use crate::law::Law;
 use crate::observable::Observables;
@@ -69,8 +68,8 @@ pub struct Request<'a> {
     pub output: &'a Path,
     /// What to do if it is there.
     pub existing: Existing,
-    /// Threads; as many as the machine has where it is not given.
-    pub threads: Option<usize>,
+    /// Engine, threads and memory.
+    pub settings: Settings,
     /// What `provenance.json` says.
     pub provenance: wire::Provenance,
     /// The author's difference, if it is to be stored as the member that the provenance names.
@@ -126,7 +125,7 @@ pub fn draw(request: &Request<'_>, clock: &dyn Clock, observer: &dyn Observer, s
     };
     let spool = || Spool::new(folder).map_err(refuse);
     let (mut texts, mut samples) = (spool()?, spool()?);
-    let pool = crate::engine::threads(request.threads)?;
+    let pool = request.settings.pool()?;
 
     let start = clock.utc();
     let mut drawn = Vec::with_capacity(request.plan.ensembles().len());
@@ -138,6 +137,7 @@ pub fn draw(request: &Request<'_>, clock: &dyn Clock, observer: &dyn Observer, s
             seed: request.seed,
             first_depth,
             ensemble,
+            settings: &request.settings,
             observer,
             stop,
         };
@@ -217,6 +217,7 @@ struct Work<'a> {
     seed: Seed,
     first_depth: u8,
     ensemble: &'a Ensemble,
+    settings: &'a Settings,
     observer: &'a dyn Observer,
     stop: &'a Stop,
 }
@@ -225,7 +226,7 @@ impl Work<'_> {
     fn draw(&self, texts: &mut Spool, samples: &mut Spool) -> Result<Drawn> {
         let law = self.ensemble.law();
         let map = RandomMap::new(law)?;
-        let engine = Plain::new(&map);
+        let crew = Crew::new(&map, self.settings);
         let observables = Observables::new(law);
         let columns = Columns::new(observables.names())?;
         let key = law.key()?;
@@ -248,14 +249,14 @@ impl Work<'_> {
         let mut rows = 0;
         for first in (0..planned).step_by(usize::try_from(block).unwrap_or(usize::MAX)) {
             let indices = first..planned.min(first + block);
-            let draw_one = |index: u64| {
+            let draw_one = |engine: &mut dyn Engine, index: &u64| {
                 let address = Address {
                     seed: self.seed,
                     key,
-                    sample: SampleIndex(index),
+                    sample: SampleIndex(*index),
                 };
                 let sample = coupling::draw(
-                    &engine,
+                    engine,
                     &address,
                     self.first_depth,
                     self.ensemble.depth_limit(),
@@ -264,14 +265,9 @@ impl Work<'_> {
                 let measured = sample.exact().map(|exact| observables.measure(exact));
                 let measured = measured.map(|values| values.iter().map(ToString::to_string).collect());
                 self.observer.advance(1);
-                Ok((index, sample, measured))
+                Ok((*index, sample, measured))
             };
-            let drawn: Vec<_> = indices
-                .collect::<Vec<_>>()
-                .into_par_iter()
-                .with_max_len(1)
-                .map(draw_one)
-                .collect::<Result<_>>()?;
+            let drawn = crew.each(&indices.collect::<Vec<_>>(), draw_one)?;
             for (index, sample, measured) in drawn {
                 let outcome = match measured {
                     Some(observables) => Outcome::Exact { row: rows, observables },

@@ -4,9 +4,8 @@
 //! meet is never refused: the depth limit decides, and its unfinished samples are recorded. But its
 //! author is told beforehand.
 
-use crate::engine::Engine;
 use crate::engine::Stop;
-use crate::engine::plain::Plain;
+use crate::engine::crew::{Crew, Settings};
 use crate::error::{Error, Result};
 use crate::plan::{Ensemble, Plan};
 use crate::quantity::{Digest, EnsembleIndex, SampleIndex, Seed};
@@ -84,7 +83,9 @@ fn caution(ensemble: &Ensemble, map: &RandomMap, lanes_left: &mut u64, stop: &St
         key: ensemble.key(),
         sample: SampleIndex(0),
     };
-    let trial = Plain::new(map).attempt(&address, depth, stop)?;
+    let trial = Crew::new(map, &Settings::default())
+        .engine()
+        .attempt(&address, depth, stop)?;
     if trial.merged_at.is_some() {
         return Ok(None);
     }

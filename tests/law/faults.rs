@@ -155,7 +155,7 @@ impl<'a> Variant<'a> {
 }
 
 impl Engine for Variant<'_> {
-    fn attempt(&self, address: &Address, depth: u8, _: &Stop) -> Result<Attempt> {
+    fn attempt(&mut self, address: &Address, depth: u8, _: &Stop) -> Result<Attempt> {
         let mut chains = self.start();
         let mut merged_at = None;
         let words = self.carry(
@@ -180,7 +180,7 @@ impl Engine for Variant<'_> {
 
 fn draw_variant(law: &Law, fault: Option<Fault>, count: u64) -> Vec<Sample> {
     let map = RandomMap::new(law).unwrap();
-    draw_with(&Variant::new(&map, fault), law, count)
+    draw_with(|| Variant::new(&map, fault), law, count)
 }
 
 /// The samples of someone who means `law` and makes `fault`.

@@ -71,8 +71,8 @@ proptest! {
     #[test]
     fn first_depth_changes_nothing(law in laws(), sample in any::<u64>(), first in 0u8..=12) {
         let map = RandomMap::new(&law).unwrap();
-        let engine = Plain::new(&map);
-        let draw = |first| coupling::draw(&engine, &address(&law, sample), first, LIMIT, &Stop::default()).unwrap();
+        let mut engine = Plain::new(&map);
+        let mut draw = |first| coupling::draw(&mut engine, &address(&law, sample), first, LIMIT, &Stop::default()).unwrap();
         prop_assert_eq!(draw(0), draw(first));
     }
 
@@ -80,9 +80,9 @@ proptest! {
     #[test]
     fn deeper_attempts_meet_with_the_same_state(law in laws(), sample in any::<u64>()) {
         let map = RandomMap::new(&law).unwrap();
-        let engine = Plain::new(&map);
+        let mut engine = Plain::new(&map);
         let address = address(&law, sample);
-        let drawn = coupling::draw(&engine, &address, 0, LIMIT, &Stop::default()).unwrap();
+        let drawn = coupling::draw(&mut engine, &address, 0, LIMIT, &Stop::default()).unwrap();
         let Outcome::Exact(state) = &drawn.outcome else { return Ok(()) };
         for depth in 0..drawn.depth + 3 {
             let attempt = engine.attempt(&address, depth, &Stop::default()).unwrap();

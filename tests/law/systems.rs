@@ -70,10 +70,10 @@ pub fn address(law: &Law, sample: u64) -> Address {
     }
 }
 
-/// The first `count` samples that an engine gives.
-pub fn draw_with(engine: &dyn Engine, law: &Law, count: u64) -> Vec<Sample> {
+/// The first `count` samples that an engine gives; `engine` makes one for each thread.
+pub fn draw_with<E: Engine>(engine: impl Fn() -> E + Sync, law: &Law, count: u64) -> Vec<Sample> {
     let address = address(law, 0);
-    let draw = |sample| {
+    let draw = |engine: &mut E, sample| {
         let address = Address {
             sample: SampleIndex(sample),
             ..address
@@ -82,13 +82,13 @@ pub fn draw_with(engine: &dyn Engine, law: &Law, count: u64) -> Vec<Sample> {
         assert!(sample.exact().is_some(), "{}: unfinished at depth 20", law.lattice());
         sample
     };
-    (0..count).into_par_iter().map(draw).collect()
+    (0..count).into_par_iter().map_init(&engine, draw).collect()
 }
 
 /// The first `count` samples that the plain engine gives.
 pub fn draw(law: &Law, count: u64) -> Vec<Sample> {
     let map = RandomMap::new(law).unwrap();
-    draw_with(&Plain::new(&map), law, count)
+    draw_with(|| Plain::new(&map), law, count)
 }
 
 pub fn configurations(samples: &[Sample]) -> impl Iterator<Item = &Configuration> {

@@ -96,7 +96,7 @@ fn digest(value: &Value) -> Digest {
 fn check(case: &Value, law: &Law, first_depths: &[u8]) {
     let name = case["name"].as_str().unwrap();
     let map = RandomMap::new(law).unwrap();
-    let engine = Plain::new(&map);
+    let mut engine = Plain::new(&map);
     let observables = Observables::new(law);
     assert_eq!(
         u64::from(law.lattice().sites()),
@@ -130,7 +130,7 @@ fn check(case: &Value, law: &Law, first_depths: &[u8]) {
             sample: SampleIndex(index),
         };
         for first_depth in first_depths {
-            let drawn = coupling::draw(&engine, &address, *first_depth, limit, &Stop::default()).unwrap();
+            let drawn = coupling::draw(&mut engine, &address, *first_depth, limit, &Stop::default()).unwrap();
             let at = format!("{name}, sample {index} from depth {first_depth}");
             assert_eq!(
                 drawn.depth,

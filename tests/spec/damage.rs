@@ -10,6 +10,7 @@ use pastproof::audit::replay::{Which, replay};
 use pastproof::audit::seal::{Anchors, audit};
 use pastproof::engine::Stop;
 use pastproof::engine::coupling::Proof;
+use pastproof::engine::crew::Settings;
 use pastproof::error::Class;
 use pastproof::observer::Silent;
 use pastproof::quantity::{Digest, SampleIndex, Seed};
@@ -60,8 +61,19 @@ fn is_noticed(number: u64, whole: &[u8], tar: &[u8], members: &[(String, Vec<u8>
             true
         }
     };
-    let replayed =
-        Run::open(&path).and_then(|run| replay(&run, Which::All, Proof::Fast, Some(1), &Silent, &Stop::default()));
+    let replayed = Run::open(&path).and_then(|run| {
+        replay(
+            &run,
+            Which::All,
+            Proof::Fast,
+            &Settings {
+                threads: Some(1),
+                ..Settings::default()
+            },
+            &Silent,
+            &Stop::default(),
+        )
+    });
     if let Err(error) = replayed {
         assert_eq!(error.class(), Class::Archive, "{at}: {error}");
     }

@@ -4,6 +4,7 @@ use std::time::Duration;
 
 use pastproof::archive::wire;
 use pastproof::engine::Stop;
+use pastproof::engine::crew::Settings;
 use pastproof::observer::Silent;
 use pastproof::plan::Plan;
 use pastproof::quantity::Seed;
@@ -71,7 +72,10 @@ impl Drawing {
             first_depth: self.first_depth,
             output: &output,
             existing: Existing::Refuse,
-            threads: Some(self.threads),
+            settings: Settings {
+                threads: Some(self.threads),
+                ..Settings::default()
+            },
             provenance: self.provenance.clone(),
             patch: self.patch.as_deref(),
             platform: "elsewhere".into(),

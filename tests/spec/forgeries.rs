@@ -19,6 +19,7 @@ use pastproof::audit::seal::{Anchors, audit};
 use pastproof::audit::{Answer, Check, Conclusion};
 use pastproof::engine::Stop;
 use pastproof::engine::coupling::{Proof, redraw};
+use pastproof::engine::crew::Settings;
 use pastproof::engine::plain::Plain;
 use pastproof::error::{Class, Error, Result};
 use pastproof::observer::Silent;
@@ -250,7 +251,13 @@ fn samples() -> Vec<Forgery> {
                 archive.edit_table(|table| {
                     let row = &mut table.rows[5];
                     row.depth += 1;
-                    let longer = redraw(&Plain::new(&map), &address, row.depth, Proof::Fast, &Stop::default());
+                    let longer = redraw(
+                        &mut Plain::new(&map),
+                        &address,
+                        row.depth,
+                        Proof::Fast,
+                        &Stop::default(),
+                    );
                     row.merged_at = longer.unwrap().0.merged_at;
                 });
             },
@@ -1328,7 +1335,16 @@ fn differences(forgery: &Forgery, path: &Path) -> Vec<String> {
         seal: Some(Digest::of(original.bytes("MANIFEST.sha256"))),
     };
     let replayed = Run::open(path)
-        .and_then(|run| replay(&run, Which::All, Proof::Full, None, &Silent, &Stop::default()))
+        .and_then(|run| {
+            replay(
+                &run,
+                Which::All,
+                Proof::Full,
+                &Settings::default(),
+                &Silent,
+                &Stop::default(),
+            )
+        })
         .map(|report| (report.checks, report.conclusion));
     let added: &[&str] = match forgery.outside {
         Outside::Neither => &[],

@@ -12,6 +12,7 @@ use pastproof::audit::seal::{Anchors, audit};
 use pastproof::audit::{Answer, Conclusion};
 use pastproof::engine::Stop;
 use pastproof::engine::coupling::Proof;
+use pastproof::engine::crew::Settings;
 use pastproof::observer::Silent;
 use pastproof::plan::Plan;
 use pastproof::quantity::{Digest, EnsembleIndex, SampleIndex, Seed};
@@ -172,7 +173,17 @@ fn every_archive_is_confirmed() {
 fn every_sample_is_drawn_again() {
     for line in listed() {
         let run = Run::open(&golden(&line.file)).unwrap();
-        let again = |which| replay(&run, which, Proof::Full, None, &Silent, &Stop::default()).unwrap();
+        let again = |which| {
+            replay(
+                &run,
+                which,
+                Proof::Full,
+                &Settings::default(),
+                &Silent,
+                &Stop::default(),
+            )
+            .unwrap()
+        };
         if line.file == LARGE {
             for sample in SOME {
                 let report = again(Which::One(EnsembleIndex(0), SampleIndex(sample)));

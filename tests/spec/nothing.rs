@@ -13,6 +13,7 @@ use pastproof::audit::replay::{Which, replay};
 use pastproof::audit::seal::{Anchors, audit};
 use pastproof::engine::Stop;
 use pastproof::engine::coupling::Proof;
+use pastproof::engine::crew::Settings;
 use pastproof::error::{Class, Error};
 use pastproof::observer::Silent;
 use pastproof::plan::Plan;
@@ -197,7 +198,14 @@ fn where_there_is_nothing_to_check_nobody_says_holds() {
         let audited = audit(&path, Anchors::default(), &Silent).map_or_else(refused, |report| Some(report.conclusion));
         let replayed = |which| {
             let run = Run::open(&path)?;
-            replay(&run, which, Proof::Full, None, &Silent, &Stop::default())
+            replay(
+                &run,
+                which,
+                Proof::Full,
+                &Settings::default(),
+                &Silent,
+                &Stop::default(),
+            )
         };
         let all = replayed(Which::All).map_or_else(refused, |report| Some(report.conclusion));
         let (audit_must, replay_must) = match verdict {

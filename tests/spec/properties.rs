@@ -12,6 +12,7 @@ use pastproof::audit::replay::{Which, replay};
 use pastproof::audit::seal::{Anchors, audit};
 use pastproof::engine::Stop;
 use pastproof::engine::coupling::Proof;
+use pastproof::engine::crew::Settings;
 use pastproof::observer::Silent;
 use pastproof::plan::Plan;
 use pastproof::quantity::{Digest, EnsembleIndex, SampleIndex};
@@ -188,7 +189,17 @@ fn examine(path: &Path, anchors: Anchors) -> Option<Conclusion> {
     if let Ok(run) = Run::open(path) {
         let _ = show(&run);
         let one = Which::One(EnsembleIndex(0), SampleIndex(3));
-        let _ = replay(&run, one, Proof::Fast, Some(1), &Silent, &Stop::default());
+        let _ = replay(
+            &run,
+            one,
+            Proof::Fast,
+            &Settings {
+                threads: Some(1),
+                ..Settings::default()
+            },
+            &Silent,
+            &Stop::default(),
+        );
     }
     audit(path, anchors, &Silent).ok().map(|report| report.conclusion)
 }
