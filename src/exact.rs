@@ -176,8 +176,7 @@ impl Enumeration {
 impl Weights {
     fn of(law: &Law) -> Result<Self> {
         let lattice = law.lattice();
-        let bonds = lattice.bonds();
-        let pair = |[a, b]: &[u32; 2]| 1u32 << a | 1 << b;
+        let pairs: Vec<u32> = lattice.edges().map(|[a, b]| 1 << a | 1 << b).collect();
         let mut held = (0, 0);
         for (site, spin) in law.held().map_or(&[][..], |held| held.sites()) {
             held.0 |= 1 << site;
@@ -185,9 +184,9 @@ impl Weights {
         }
         let (slope, levels) = match law.model() {
             Model::LatticeGas { activity } => {
-                let occupied = bonds.frozen.iter().filter(|(_, spin)| spin.bit());
+                let occupied = lattice.frozen().filter(|(_, spin)| spin.bit());
                 let levels = Levels::LatticeGas {
-                    edges: bonds.edges.iter().map(pair).collect(),
+                    edges: pairs,
                     empty: occupied.fold(0, |sites, (site, _)| sites | 1 << site),
                 };
                 (ln(float(activity.as_fraction())), levels)
@@ -199,16 +198,16 @@ impl Weights {
                     None => list.unwrap_or_default().to_vec(),
                 };
                 let couplings = graph.and_then(|graph| graph.couplings());
-                let couplings = listed(coupling, couplings, bonds.edges.len());
+                let couplings = listed(coupling, couplings, pairs.len());
                 let fields = graph.and_then(|graph| graph.fields());
                 let mut fields: Vec<RBig> = listed(field, fields, lattice.sites() as usize)
                     .into_iter()
                     .map(|field| field.as_fraction().clone())
                     .collect();
                 // only lattices with one coupling have frozen neighbours
-                for ((site, spin), coupling) in bonds.frozen.iter().zip(coupling.iter().cycle()) {
+                for ((site, spin), coupling) in lattice.frozen().zip(coupling.iter().cycle()) {
                     let coupling = coupling.as_fraction();
-                    let field = &mut fields[*site as usize];
+                    let field = &mut fields[site as usize];
                     *field = match spin {
                         Spin::Plus => &*field + coupling,
                         Spin::Minus => &*field - coupling,
@@ -231,7 +230,7 @@ impl Weights {
                 let slope = number(beta) * float(&RBig::from_parts(IBig::ONE, denominator.clone()));
                 let levels = Levels::Ising {
                     denominator,
-                    edges: bonds.edges.iter().map(pair).zip(couplings).collect(),
+                    edges: pairs.into_iter().zip(couplings).collect(),
                     fields,
                 };
                 (slope, levels)

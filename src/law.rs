@@ -12,7 +12,7 @@ use serde_json::{Value, json};
 
 use crate::canonical;
 use crate::error::{Error, ErrorKind, Result};
-use crate::lattice::{Bonds, Boundary, Graph, Kind, Lattice, Regular, Spin};
+use crate::lattice::{Boundary, Graph, Kind, Lattice, Regular, Spin};
 use crate::number::Exact;
 use crate::quantity::Digest;
 use crate::sample::Configuration;
@@ -213,15 +213,15 @@ impl Law {
             values[*site as usize] = spin.bit();
         }
         // every site that is not held may be empty, so the held ones alone decide
-        match self.weight_zero(&self.lattice.bonds(), &Configuration::pack(&values)) {
+        match self.weight_zero(&Configuration::pack(&values)) {
             Some(what) => Err(Error::conflict(format!("held values have weight zero: {what}")).at_field("held")),
             None => Ok(()),
         }
     }
 
     /// Why a sample cannot be one of this law, if its weight is zero: a held value is not kept, or two
-    /// neighbours are occupied. `bonds` are those of the law's lattice.
-    pub fn weight_zero(&self, bonds: &Bonds, sample: &Configuration) -> Option<String> {
+    /// neighbours are occupied.
+    pub fn weight_zero(&self, sample: &Configuration) -> Option<String> {
         let held = self.held.iter().flat_map(|held| &held.sites);
         for (site, spin) in held {
             if sample.is_plus(*site) != spin.bit() {
@@ -238,17 +238,12 @@ impl Law {
         if activity.is_zero() && sample.count_plus() > 0 {
             return Some("a site is occupied at activity 0".into());
         }
-        if let Some([a, b]) = bonds
-            .edges
-            .iter()
-            .find(|[a, b]| sample.is_plus(*a) && sample.is_plus(*b))
-        {
+        let both = |[a, b]: &[u32; 2]| sample.is_plus(*a) && sample.is_plus(*b);
+        if let Some([a, b]) = self.lattice.edges().find(both) {
             return Some(format!("the neighbours {a} and {b} are both occupied"));
         }
-        let frozen = bonds
-            .frozen
-            .iter()
-            .find(|(site, spin)| spin.bit() && sample.is_plus(*site));
+        let mut frozen = self.lattice.frozen();
+        let frozen = frozen.find(|(site, spin)| spin.bit() && sample.is_plus(*site));
         frozen.map(|(site, _)| format!("site {site} is occupied beside an occupied boundary"))
     }
 

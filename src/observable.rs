@@ -45,7 +45,7 @@ impl Observables {
         let edges = if matches!(pairs, Pairs::None) {
             Vec::new()
         } else {
-            law.lattice().bonds().edges
+            law.lattice().edges().collect()
         };
         Self { edges, pairs }
     }

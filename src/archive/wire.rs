@@ -288,7 +288,7 @@ impl Map {
                 Digits::Plain => "plain".into(),
             },
             argument: argument.into(),
-            lanes: map.classes().iter().map(|class| class.len() as u64).collect(),
+            lanes: map.classes().iter().map(|class| class.lanes().into()).collect(),
             thresholds: map
                 .thresholds()
                 .iter()

@@ -410,7 +410,6 @@ impl Meaning {
         let mut rows = run.rows(number, columns)?;
         let mut leaves = Vec::new();
         let (mut exact, mut seen) = (0, 0u64);
-        let edges = checked.law.lattice().bonds();
         loop {
             let block = rows
                 .by_ref()
@@ -431,7 +430,7 @@ impl Meaning {
                 }
             }
             seen += block.len() as u64;
-            exact = self.check_samples(run, checked, &edges, &block, exact)?;
+            exact = self.check_samples(run, checked, &block, exact)?;
         }
         self.check_lengths(run, checked, exact)?;
         self.samples_seen += seen;
@@ -536,14 +535,7 @@ impl Meaning {
     }
 
     /// The stored samples of a block of rows; `first` is the number of exact samples before it.
-    fn check_samples(
-        &mut self,
-        run: &Run,
-        checked: &Checked<'_>,
-        bonds: &crate::lattice::Bonds,
-        block: &[Row],
-        first: u64,
-    ) -> Result<u64> {
+    fn check_samples(&mut self, run: &Run, checked: &Checked<'_>, block: &[Row], first: u64) -> Result<u64> {
         let sites = checked.law.lattice().sites();
         let width = bytes_per_sample(sites);
         let exact: Vec<&Row> = block.iter().filter(|row| row.exact_row().is_some()).collect();
@@ -581,7 +573,7 @@ impl Meaning {
                         fault(format!("{name}: recorded {found}, the stored bytes give {expected}"))
                     });
                 }
-                if let Some(what) = checked.law.weight_zero(bonds, &sample) {
+                if let Some(what) = checked.law.weight_zero(&sample) {
                     self.support.fault(fault(what));
                 }
             }

@@ -8,19 +8,35 @@ use crate::engine::Engine;
 use crate::engine::Stop;
 use crate::error::Result;
 use crate::law::Digits;
-use crate::random_map::RandomMap;
+use crate::random_map::{End, RandomMap};
 use crate::sample::Configuration;
 use crate::stream::{Address, GROUP, STRIP, Words};
 
 /// Applies a random map site by site.
 pub struct Plain<'a> {
     map: &'a RandomMap,
+    /// The lists of a sweep.
+    lists: Vec<Vec<u32>>,
+    /// Where the ends of each site begin, and the last ones end.
+    first: Vec<usize>,
+    ends: Vec<End>,
 }
 
 impl<'a> Plain<'a> {
     /// The plain engine of `map`.
     pub fn new(map: &'a RandomMap) -> Self {
-        Self { map }
+        let (mut first, mut ends) = (vec![0], Vec::new());
+        for site in 0..map.sites() {
+            ends.extend(map.ends(site));
+            first.push(ends.len());
+        }
+        let lists = map.classes().iter().map(|class| class.sites().collect()).collect();
+        Self {
+            map,
+            lists,
+            first,
+            ends,
+        }
     }
 
     /// The numbers U of a group of lanes, each with the digits that were handed out on top.
@@ -59,24 +75,31 @@ impl<'a> Plain<'a> {
             .all(|threshold| threshold.is_decided(number, digits))
     }
 
+    /// What `site` becomes with `number` when the far end of each of its edges has the value that `far` gives.
+    fn becomes_plus(&self, site: u32, number: u128, far: impl Fn(&End) -> bool) -> bool {
+        let ends = &self.ends[self.first[site as usize]..self.first[site as usize + 1]];
+        self.map
+            .threshold_among(site, ends.iter().copied(), far)
+            .is_above(number)
+    }
+
     /// One sweep: every lane of every class decided once, in both bounds.
     fn sweep(&self, strips: &mut Vec<Words>, address: &Address, epoch: u32, lower: &mut [bool], upper: &mut [bool]) {
-        for class in self.map.classes() {
-            for (group, lanes) in class.chunks(GROUP).enumerate() {
+        for list in &self.lists {
+            for (group, lanes) in list.chunks(GROUP).enumerate() {
                 let strip = group / STRIP;
                 if strip == strips.len() {
                     strips.push(address.words(epoch, u32::try_from(strip).unwrap_or(u32::MAX)));
                 }
                 let numbers = self.numbers(lanes, &mut strips[strip]);
                 for (&site, number) in lanes.iter().zip(numbers) {
-                    let smallest = self
-                        .map
-                        .threshold(site, |end| bound(end.rising, lower, upper)[end.site as usize]);
-                    let largest = self
-                        .map
-                        .threshold(site, |end| bound(end.rising, upper, lower)[end.site as usize]);
-                    lower[site as usize] = smallest.is_above(number);
-                    upper[site as usize] = largest.is_above(number);
+                    let smallest = |end: &End| bound(end.rising, lower, upper)[end.site as usize];
+                    let largest = |end: &End| bound(end.rising, upper, lower)[end.site as usize];
+                    let both = [
+                        self.becomes_plus(site, number, smallest),
+                        self.becomes_plus(site, number, largest),
+                    ];
+                    [lower[site as usize], upper[site as usize]] = both;
                 }
             }
         }

@@ -41,12 +41,14 @@ pub enum Fault {
 /// The compact engine.
 pub struct Variant<'a> {
     map: &'a RandomMap,
+    lists: Vec<Vec<u32>>,
     fault: Option<Fault>,
 }
 
 impl<'a> Variant<'a> {
     pub fn new(map: &'a RandomMap, fault: Option<Fault>) -> Self {
-        Self { map, fault }
+        let lists = map.classes().iter().map(|class| class.sites().collect()).collect();
+        Self { map, lists, fault }
     }
 
     fn moved(&self, threshold: Threshold) -> Threshold {
@@ -102,8 +104,8 @@ impl<'a> Variant<'a> {
         for epoch in (0..=u32::from(depth)).rev() {
             let mut strips: Vec<Words> = Vec::new();
             for _ in 0..(1u64 << epoch) / 2 + u64::from(epoch == 0) {
-                for class in self.map.classes() {
-                    for (group, sites) in class.chunks(GROUP).enumerate() {
+                for list in &self.lists {
+                    for (group, sites) in list.chunks(GROUP).enumerate() {
                         let strip = group / STRIP;
                         if strip == strips.len() {
                             strips.push(address.words(epoch, strip as u32));

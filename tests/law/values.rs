@@ -185,7 +185,10 @@ fn enumeration_gives_the_known_states_and_energies() {
         let edges: Vec<[u32; 2]> = serde_json::from_value(record["edges"].clone()).unwrap();
         let sites = record["n"].as_u64().unwrap();
         if name.contains("torus") || name.contains("grid") {
-            assert_eq!(lattice_named(name).bonds().edges, edges, "{name}: edges in their order");
+            assert!(
+                lattice_named(name).edges().eq(edges.clone()),
+                "{name}: edges in their order"
+            );
         }
         check(name, &graph(sites, &edges, "", ""), "0", None, &record["values"]);
         // all pairs of energy and magnetisation, at infinite temperature

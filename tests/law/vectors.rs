@@ -104,7 +104,7 @@ fn check(case: &Value, law: &Law, first_depths: &[u8]) {
         "{name}"
     );
     assert_eq!(
-        law.lattice().bonds().edges.len() as u64,
+        law.lattice().edges().count() as u64,
         case["edge_count"].as_u64().unwrap(),
         "{name}"
     );

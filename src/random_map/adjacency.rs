@@ -1,0 +1,67 @@
+//! Who is at the far end of each edge of a site: from coordinates on a regular lattice, from a list on a graph.
+
+use std::sync::Arc;
+
+use crate::lattice::{Graph, Lattice, Neighbour, Regular};
+
+use super::labels::Labels;
+
+/// The edges of each site.
+#[derive(Debug)]
+pub(super) enum Adjacency {
+    /// All with coupling number 0: what stands at a boundary too has the one coupling of the law.
+    Regular(Regular),
+    /// Site by site, in the order of the edges.
+    Listed {
+        /// Where the ends of each site begin, and the last ones end.
+        first: Vec<u32>,
+        far: Vec<u32>,
+        /// The number of the coupling, end by end.
+        coupling: Labels,
+    },
+}
+
+impl Adjacency {
+    /// The edges of `lattice`; `coupling` gives the number of the coupling of each edge of a graph.
+    pub(super) fn of(lattice: &Lattice, coupling: impl Fn(usize) -> u32) -> Self {
+        match lattice {
+            Lattice::Regular(regular) => Self::Regular(regular.clone()),
+            Lattice::Graph(graph) => Self::of_graph(graph, coupling),
+        }
+    }
+
+    fn of_graph(graph: &Arc<Graph>, coupling_of: impl Fn(usize) -> u32) -> Self {
+        let mut first = vec![0; graph.sites() as usize + 1];
+        for site in graph.edges().as_flattened() {
+            first[*site as usize + 1] += 1;
+        }
+        for site in 1..first.len() {
+            first[site] += first[site - 1];
+        }
+        let mut filled = first.clone();
+        let mut far = vec![0; 2 * graph.edges().len()];
+        let mut coupling = Labels::new(far.len());
+        for (edge, [a, b]) in graph.edges().iter().enumerate() {
+            for (near, other) in [(*a, *b), (*b, *a)] {
+                let at = filled[near as usize] as usize;
+                far[at] = other;
+                coupling.set(at, coupling_of(edge));
+                filled[near as usize] += 1;
+            }
+        }
+        Self::Listed { first, far, coupling }
+    }
+
+    /// The far ends of the edges of `site`, frozen ones included, each with the number of its coupling.
+    pub(super) fn neighbours(&self, site: u32) -> impl Iterator<Item = (Neighbour, u32)> + '_ {
+        let (regular, listed) = match self {
+            Self::Regular(regular) => (Some(regular.neighbours(site).map(|far| (far, 0))), None),
+            Self::Listed { first, far, coupling } => {
+                let ends = first[site as usize] as usize..first[site as usize + 1] as usize;
+                let listed = ends.map(|at| (Neighbour::Site(far[at]), coupling.get(at)));
+                (None, Some(listed))
+            }
+        };
+        regular.into_iter().flatten().chain(listed.into_iter().flatten())
+    }
+}
