@@ -23,6 +23,11 @@ fn main() {
     for source in SOURCES.iter().filter(|source| folder.join(source).exists()) {
         println!("cargo::rerun-if-changed={source}");
     }
+    // AVX-512 intrinsics are stable from this compiler on; older ones build the library without them
+    println!("cargo::rustc-check-cfg=cfg(pastproof_avx512)");
+    if rustc_minor().is_some_and(|minor| minor >= 89) {
+        println!("cargo::rustc-cfg=pastproof_avx512");
+    }
     // the library knows nothing of git or of the machine
     if env::var_os("CARGO_FEATURE_CLI").is_none() {
         return;
@@ -67,6 +72,11 @@ fn rustc_version() -> Option<String> {
     let output = Command::new(variable("RUSTC")).arg("-V").output().ok()?;
     let line = String::from_utf8(output.stdout).ok()?.trim().to_string();
     output.status.success().then_some(line)
+}
+
+/// The minor version of the compiler.
+fn rustc_minor() -> Option<u32> {
+    rustc_version()?.split('.').nth(1)?.parse().ok()
 }
 
 /// Whether `folder` is the top of a git work tree.

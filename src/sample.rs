@@ -30,6 +30,18 @@ impl Configuration {
         }
     }
 
+    /// The configuration of `sites` sites of which those in `plus` are +1 (occupied), the others -1 (empty).
+    ///
+    /// # Panics
+    /// For a site that is not one of them.
+    pub fn of_plus(sites: u32, plus: impl Iterator<Item = u32>) -> Self {
+        let mut bytes = vec![0; bytes_per_sample(sites)];
+        for site in plus {
+            bytes[site as usize / 8] |= 1 << (site % 8);
+        }
+        Self { sites, bytes }
+    }
+
     /// The configuration that `bytes` are, if they are as many as needed and padded with zeros.
     pub fn from_bytes(sites: u32, bytes: &[u8]) -> Option<Self> {
         let padded = match (sites % 8, bytes.last()) {

@@ -39,8 +39,8 @@ pub struct Words {
 }
 
 impl Address {
-    /// The generator of `strip` in `epoch`, at its first word.
-    pub fn words(&self, epoch: u32, strip: u32) -> Words {
+    /// What the generator of `strip` in `epoch` is seeded with: state and stream.
+    pub fn seeding(&self, epoch: u32, strip: u32) -> [u128; 2] {
         let mut hasher = Hasher::default();
         hasher.update(b"pastproof stream 1\n");
         hasher.update(&self.seed.0.0);
@@ -55,8 +55,14 @@ impl Address {
                 .rev()
                 .fold(0, |number: u128, &byte| number << 8 | u128::from(byte))
         };
+        [half(0..16), half(16..32)]
+    }
+
+    /// The generator of `strip` in `epoch`, at its first word.
+    pub fn words(&self, epoch: u32, strip: u32) -> Words {
+        let [state, stream] = self.seeding(epoch, strip);
         Words {
-            generator: Lcg128CmDxsm64::new(half(0..16), half(16..32)),
+            generator: Lcg128CmDxsm64::new(state, stream),
             drawn: 0,
         }
     }

@@ -102,6 +102,7 @@ impl Work {
     pub fn settings(&self) -> Settings {
         Settings {
             engine: self.engine,
+            width: None,
             memory: self.memory,
             threads: self.threads,
         }

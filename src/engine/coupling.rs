@@ -8,7 +8,7 @@ use crate::engine::Attempt;
 use crate::engine::Engine;
 use crate::engine::Stop;
 use crate::error::Result;
-use crate::sample::{Outcome, Sample};
+use crate::sample::{Configuration, Outcome, Sample};
 use crate::stream::Address;
 
 /// Draws the sample at `address`, making the first attempt at `first_depth`. Neither the sample nor
@@ -26,30 +26,26 @@ pub fn draw(
     let mut depth = first_depth.min(depth_limit);
     let mut attempt = engine.attempt(address, depth, stop)?;
     if attempt.merged_at.is_some() {
+        let mut bounds = engine.bounds();
         while depth > 0 {
             let smaller = engine.attempt(address, depth - 1, stop)?;
             if smaller.merged_at.is_none() {
                 break;
             }
-            (depth, attempt) = (depth - 1, smaller);
+            (depth, attempt, bounds) = (depth - 1, smaller, engine.bounds());
         }
-    } else {
-        while attempt.merged_at.is_none() && depth < depth_limit {
-            depth += 1;
-            attempt = engine.attempt(address, depth, stop)?;
-        }
+        return Ok(finish(depth, attempt, bounds));
     }
-    Ok(finish(depth, attempt))
+    while attempt.merged_at.is_none() && depth < depth_limit {
+        depth += 1;
+        attempt = engine.attempt(address, depth, stop)?;
+    }
+    Ok(finish(depth, attempt, engine.bounds()))
 }
 
 /// The sample that the deciding attempt gives.
-fn finish(depth: u8, attempt: Attempt) -> Sample {
-    let Attempt {
-        lower,
-        upper,
-        merged_at,
-        words,
-    } = attempt;
+fn finish(depth: u8, attempt: Attempt, [lower, upper]: [Configuration; 2]) -> Sample {
+    let Attempt { merged_at, words } = attempt;
     match merged_at {
         Some(merged_at) => Sample {
             outcome: Outcome::Exact(lower),
@@ -89,10 +85,11 @@ pub fn redraw(
     stop: &Stop,
 ) -> Result<(Sample, bool)> {
     let attempt = engine.attempt(address, depth, stop)?;
+    let bounds = engine.bounds();
     let met = attempt.merged_at.is_some();
     let smaller_met = match proof {
         Proof::Full if met && depth > 0 => engine.attempt(address, depth - 1, stop)?.merged_at.is_some(),
         _ => false,
     };
-    Ok((finish(depth, attempt), smaller_met))
+    Ok((finish(depth, attempt, bounds), smaller_met))
 }

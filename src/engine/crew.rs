@@ -10,6 +10,9 @@ use rayon::prelude::*;
 
 use crate::engine::Engine;
 use crate::engine::plain::Plain;
+use crate::engine::sliced::program::Program;
+use crate::engine::sliced::{Sliced, Strips};
+use crate::engine::word::Width;
 use crate::error::{Error, Result};
 use crate::random_map::RandomMap;
 
@@ -28,16 +31,22 @@ pub enum Choice {
 pub struct Settings {
     /// Which engine.
     pub engine: Choice,
+    /// The widest words to use; where it is not given, the widest of the machine.
+    pub width: Option<Width>,
     /// Bytes that all engines together may use to keep parts of a random map.
     pub memory: u64,
     /// Threads; as many as the machine has where it is not given.
     pub threads: Option<usize>,
 }
 
+/// Bytes for kept parts of random maps, if nothing else is said.
+pub const DEFAULT_MEMORY: u64 = 1 << 30;
+
 impl Default for Settings {
     fn default() -> Self {
         Self {
             engine: Choice::Automatic,
+            width: None,
             memory: DEFAULT_MEMORY,
             threads: None,
         }
@@ -56,33 +65,63 @@ impl Settings {
     }
 }
 
-/// Bytes for kept parts of random maps, if nothing else is said.
-pub const DEFAULT_MEMORY: u64 = 1 << 30;
+/// What an engine works from, made once for a law.
+enum Compiled {
+    Plain,
+    Sliced(Box<Program>, Width),
+}
 
 /// Engines for one law, as many as threads need.
 pub struct Crew<'a> {
     map: &'a RandomMap,
-    settings: Settings,
-    idle: Mutex<Vec<Box<dyn Engine + 'a>>>,
+    compiled: Compiled,
+    memory: u64,
 }
+
+/// Samples, or strips of one sample: what threads share.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+enum Sharing {
+    Samples,
+    Strips,
+}
+
+/// Strips of one class, for each thread at least, that make it worthwhile to share one sample.
+const STRIPS_A_THREAD: usize = 2;
 
 impl<'a> Crew<'a> {
     /// A crew for `map`.
     pub fn new(map: &'a RandomMap, settings: &Settings) -> Self {
+        let compiled = match settings.engine {
+            Choice::Plain => Compiled::Plain,
+            Choice::Automatic => match Program::new(map) {
+                Some(program) => Compiled::Sliced(Box::new(program), settings.width.unwrap_or_else(Width::widest)),
+                None => Compiled::Plain,
+            },
+        };
         Self {
             map,
-            settings: settings.clone(),
-            idle: Mutex::new(Vec::new()),
+            compiled,
+            memory: settings.memory,
         }
     }
 
-    /// One engine of the crew.
-    pub fn engine(&self) -> Box<dyn Engine + 'a> {
-        Box::new(Plain::new(self.map))
+    /// One engine of the crew, with all of the memory.
+    pub fn engine(&self) -> Box<dyn Engine + '_> {
+        self.one_of(1, Strips::InTurn)
     }
 
-    /// Does `work` for each of `items` on the threads of the pool that this is called in. The results
-    /// stand in the order of the items.
+    /// One of `count` engines, with its share of the memory.
+    fn one_of(&self, count: usize, strips: Strips) -> Box<dyn Engine + '_> {
+        let memory = self.memory / count as u64;
+        match &self.compiled {
+            Compiled::Plain => Box::new(Plain::new(self.map)),
+            Compiled::Sliced(program, width) => Box::new(Sliced::new(self.map, program, *width, strips, memory)),
+        }
+    }
+
+    /// Does `work` for each of `items` on the threads of the pool that this is called in: side by
+    /// side, and where fewer are left than threads and one sample is large, each on all threads.
+    /// The results stand in the order of the items.
     ///
     /// # Errors
     /// Those of `work`.
@@ -91,21 +130,55 @@ impl<'a> Crew<'a> {
         items: &[T],
         work: impl Fn(&mut dyn Engine, &T) -> Result<R> + Sync,
     ) -> Result<Vec<R>> {
-        let one = |item: &T| {
-            let idle = self.idle.lock().ok().and_then(|mut idle| idle.pop());
-            let mut engine = idle.unwrap_or_else(|| self.engine());
-            let result = work(engine.as_mut(), item);
-            if let Ok(mut idle) = self.idle.lock() {
-                idle.push(engine);
-            }
-            result
+        let threads = rayon::current_num_threads();
+        let whole = match self.sharing_of_rest(threads) {
+            Sharing::Samples => items.len(),
+            Sharing::Strips => items.len() - items.len() % threads,
         };
-        items.par_iter().with_max_len(1).map(one).collect()
+        let (side_by_side, rest) = items.split_at(whole);
+        let mut results: Vec<R> = {
+            let engines = threads.min(side_by_side.len()).max(1);
+            let idle: Mutex<Vec<Box<dyn Engine + '_>>> = Mutex::default();
+            let one = |item: &T| {
+                let engine = idle.lock().ok().and_then(|mut idle| idle.pop());
+                let mut engine = engine.unwrap_or_else(|| self.one_of(engines, Strips::InTurn));
+                let result = work(engine.as_mut(), item);
+                if let Ok(mut idle) = idle.lock() {
+                    idle.push(engine);
+                }
+                result
+            };
+            side_by_side
+                .par_iter()
+                .with_max_len(1)
+                .map(one)
+                .collect::<Result<_>>()?
+        };
+        if !rest.is_empty() {
+            let mut engine = self.one_of(1, Strips::SideBySide);
+            for item in rest {
+                results.push(work(engine.as_mut(), item)?);
+            }
+        }
+        Ok(results)
+    }
+
+    /// What threads share when there are fewer samples than threads.
+    fn sharing_of_rest(&self, threads: usize) -> Sharing {
+        match &self.compiled {
+            Compiled::Sliced(program, _) if threads > 1 && program.strips() >= STRIPS_A_THREAD * threads => {
+                Sharing::Strips
+            }
+            _ => Sharing::Samples,
+        }
     }
 }
 
 impl fmt::Display for Crew<'_> {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        write!(f, "{:?}", self.settings.engine)
+        match &self.compiled {
+            Compiled::Plain => write!(f, "plain engine"),
+            Compiled::Sliced(_, width) => write!(f, "bit-sliced engine, {width}"),
+        }
     }
 }

@@ -7,7 +7,10 @@
 
 pub mod coupling;
 pub mod crew;
+pub mod leap;
 pub mod plain;
+pub mod sliced;
+pub mod word;
 
 use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, Ordering};
@@ -17,12 +20,8 @@ use crate::sample::Configuration;
 use crate::stream::Address;
 
 /// What one attempt gave (`STREAM.md` §6).
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
 pub struct Attempt {
-    /// The lower bound at time 0.
-    pub lower: Configuration,
-    /// The upper bound at time 0.
-    pub upper: Configuration,
     /// The largest m such that the bounds are equal at all times -m .. 0; `None` if they differ at time 0.
     pub merged_at: Option<u64>,
     /// How many words were drawn.
@@ -37,6 +36,9 @@ pub trait Engine: Send {
     /// # Errors
     /// [`ErrorKind::Stopped`] when asked to stop.
     fn attempt(&mut self, address: &Address, depth: u8, stop: &Stop) -> Result<Attempt>;
+
+    /// The lower and the upper bound at time 0 of the last attempt that came to its end.
+    fn bounds(&self) -> [Configuration; 2];
 }
 
 /// A request to stop, seen within one sweep.

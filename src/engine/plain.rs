@@ -20,6 +20,8 @@ pub struct Plain<'a> {
     /// Where the ends of each site begin, and the last ones end.
     first: Vec<usize>,
     ends: Vec<End>,
+    lower: Vec<bool>,
+    upper: Vec<bool>,
 }
 
 impl<'a> Plain<'a> {
@@ -36,6 +38,8 @@ impl<'a> Plain<'a> {
             lists,
             first,
             ends,
+            lower: Vec::new(),
+            upper: Vec::new(),
         }
     }
 
@@ -137,11 +141,11 @@ impl Engine for Plain<'_> {
             }
             words += strips.iter().map(Words::drawn).sum::<u64>();
         }
-        Ok(Attempt {
-            lower: Configuration::pack(&lower),
-            upper: Configuration::pack(&upper),
-            merged_at,
-            words,
-        })
+        (self.lower, self.upper) = (lower, upper);
+        Ok(Attempt { merged_at, words })
+    }
+
+    fn bounds(&self) -> [Configuration; 2] {
+        [Configuration::pack(&self.lower), Configuration::pack(&self.upper)]
     }
 }

@@ -83,14 +83,15 @@ fn caution(ensemble: &Ensemble, map: &RandomMap, lanes_left: &mut u64, stop: &St
         key: ensemble.key(),
         sample: SampleIndex(0),
     };
-    let trial = Crew::new(map, &Settings::default())
-        .engine()
-        .attempt(&address, depth, stop)?;
+    let crew = Crew::new(map, &Settings::default());
+    let mut engine = crew.engine();
+    let trial = engine.attempt(&address, depth, stop)?;
     if trial.merged_at.is_some() {
         return Ok(None);
     }
+    let [lower, upper] = engine.bounds();
     let apart = (0..map.sites())
-        .filter(|site| trial.lower.is_plus(*site) != trial.upper.is_plus(*site))
+        .filter(|site| lower.is_plus(*site) != upper.is_plus(*site))
         .count();
     Ok(Some(format!(
         "the law is frustrated, so the bounds may never meet: in a trial of 2^{depth} sweeps they stayed apart at \

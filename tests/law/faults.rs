@@ -43,12 +43,18 @@ pub struct Variant<'a> {
     map: &'a RandomMap,
     lists: Vec<Vec<u32>>,
     fault: Option<Fault>,
+    bounds: [Vec<bool>; 2],
 }
 
 impl<'a> Variant<'a> {
     pub fn new(map: &'a RandomMap, fault: Option<Fault>) -> Self {
         let lists = map.classes().iter().map(|class| class.sites().collect()).collect();
-        Self { map, lists, fault }
+        Self {
+            map,
+            lists,
+            fault,
+            bounds: Default::default(),
+        }
     }
 
     fn moved(&self, threshold: Threshold) -> Threshold {
@@ -170,13 +176,12 @@ impl Engine for Variant<'_> {
                 merged_at.is_some() && self.fault == Some(Fault::StateAtCoalescence)
             },
         );
-        let [lower, upper] = chains.map(|chain| Configuration::pack(&chain));
-        Ok(Attempt {
-            lower,
-            upper,
-            merged_at,
-            words,
-        })
+        self.bounds = chains;
+        Ok(Attempt { merged_at, words })
+    }
+
+    fn bounds(&self) -> [Configuration; 2] {
+        self.bounds.each_ref().map(|bound| Configuration::pack(bound))
     }
 }
 

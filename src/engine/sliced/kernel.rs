@@ -1,0 +1,371 @@
+//! The two kernels of a bit-sliced sweep: digits to answers, and answers and neighbours to values.
+//!
+//! Both work on groups of one strip, with whatever words [`crate::engine::word::call`] gives them,
+//! and everything they call is inlined into that call. [`decide`] is the only user of the generator
+//! and never sees a state; [`update`] never sees a generator.
+
+use std::ops::Range;
+
+use crate::engine::leap::Leap;
+use crate::engine::sliced::program::{Class, Form, MOST_COMPARISONS, Pattern, Program, Rule, Term};
+use crate::engine::word::{Block, Kernel, Lanes, WORDS, Width, call};
+
+/// Draws the digits of `groups` and leaves their planes, group after group.
+pub fn decide(
+    width: Width,
+    program: &Program,
+    class: &Class,
+    groups: Range<usize>,
+    leap: &mut Leap,
+    planes: &mut [Block],
+) {
+    macro_rules! at_least {
+        ($($count:literal)*) => {
+            match program.comparisons.len() {
+                $(..=$count => call(width, Decide::<$count> { program, class, groups, leap, planes }),)*
+                _ => unreachable!("a program has at most {MOST_COMPARISONS} comparisons"),
+            }
+        };
+    }
+    at_least!(0 1 2 3 4 5 7 9 13 17)
+}
+
+struct Decide<'a, const C: usize> {
+    program: &'a Program,
+    class: &'a Class,
+    groups: Range<usize>,
+    leap: &'a mut Leap,
+    planes: &'a mut [Block],
+}
+
+impl<const C: usize> Kernel for Decide<'_, C> {
+    type Output = ();
+
+    #[inline(always)]
+    fn run<L: Lanes>(self) {
+        let planes = self.planes.chunks_exact_mut(self.program.planes());
+        for (pattern, planes) in self.class.patterns[self.groups].iter().zip(planes) {
+            let pattern = &self.program.patterns[*pattern as usize];
+            let answers = digits::<L, C>(self.program, pattern, self.leap);
+            answers.write(self.program, pattern, planes);
+        }
+    }
+}
+
+/// What the digits of a group came to.
+struct Answers<L, const C: usize> {
+    /// U < 1/2 (folded only).
+    half: L,
+    /// U < theta; folded: what is left of U, or of its complement where U < 1/2, is below what is left of theta.
+    below: [L; C],
+}
+
+/// Digit after digit until every lane has decided all that it could be asked (`STREAM.md` §3).
+///
+/// Folded, a lane with U < 1/2 compares the complement of U: with complemented digits its mirror
+/// becomes theta, and U < mirror becomes "not complement < theta".
+#[inline(always)]
+fn digits<L: Lanes, const C: usize>(program: &Program, pattern: &Pattern, leap: &mut Leap) -> Answers<L, C> {
+    let (none, all) = (L::splat(0), L::splat(u64::MAX));
+    let mut answers = Answers {
+        half: none,
+        below: [none; C],
+    };
+    if !pattern.draws {
+        return answers;
+    }
+    let count = pattern.lanes.div_ceil(64);
+    // lanes whose digits so far equal those of theta
+    let mut equal = [none; C];
+    let asks = |list: &[Block], at: usize| list.get(at).map_or(none, |block| L::load(&block.0));
+    let mut place = 0;
+    // complemented where the lane compares U itself
+    let mut turn = all;
+    if program.folded {
+        let top = leap.next::<L>(count);
+        answers.half = all.without(top);
+        turn = top;
+        place = 1;
+        for (at, equal) in equal.iter_mut().enumerate() {
+            *equal = top.select(asks(&pattern.asks, at), asks(&pattern.asks_mirror, at));
+        }
+    } else {
+        for (at, equal) in equal.iter_mut().enumerate() {
+            *equal = asks(&pattern.asks, at);
+        }
+    }
+    loop {
+        let open = equal.iter().fold(none, |open, equal| open.or(*equal));
+        if open.is_none() {
+            return answers;
+        }
+        let opposite = leap.next::<L>(count).xor(turn);
+        let bits = &program.digits[place];
+        for at in 0..C {
+            // at the first digit that differs, U is below theta exactly if its digit is 0
+            answers.below[at] = equal[at].select(opposite, answers.below[at]);
+            equal[at] = equal[at].and_xor(opposite, L::splat(bits[at]));
+        }
+        place += 1;
+        if program.endings[place] {
+            for (equal, comparison) in equal.iter_mut().zip(&program.comparisons) {
+                let itself = if program.folded { turn } else { all };
+                if comparison.ends as usize == place {
+                    *equal = equal.without(itself);
+                }
+                if comparison.mirror_ends as usize == place {
+                    *equal = equal.and(itself);
+                }
+            }
+        }
+    }
+}
+
+impl<L: Lanes, const C: usize> Answers<L, C> {
+    #[inline(always)]
+    fn write(self, program: &Program, pattern: &Pattern, planes: &mut [Block]) {
+        if program.rule == Rule::Folded {
+            self.half.store(&mut planes[0].0);
+            for (plane, below) in planes[1..].iter_mut().zip(self.below) {
+                below.store(&mut plane.0);
+            }
+            return;
+        }
+        for plane in planes.iter_mut() {
+            *plane = Block::NONE;
+        }
+        // a copy to be indexed, so that the comparisons above stay in registers
+        let mut kept = [Block::NONE; C];
+        for (kept, below) in kept.iter_mut().zip(self.below) {
+            below.store(&mut kept.0);
+        }
+        let all = L::splat(u64::MAX);
+        for (pulling, form, lanes) in &pattern.answers {
+            let value = match form {
+                Form::One => all,
+                Form::Half => self.half,
+                Form::Below(at) => L::load(&kept[*at].0).or(self.half),
+                Form::Mirror(at) => self.half.without(L::load(&kept[*at].0)),
+            };
+            let plane = &mut planes[*pulling as usize].0;
+            L::load(plane).or_and(value, L::load(&lanes.0)).store(plane);
+        }
+    }
+}
+
+/// The states of one bound before and behind those of the class that is updated.
+#[derive(Clone, Copy)]
+pub struct Sides<'a> {
+    /// Before.
+    pub before: &'a [u64],
+    /// Behind.
+    pub after: &'a [u64],
+}
+
+impl<'a> Sides<'a> {
+    /// The states around `own`, and those in it.
+    pub fn around(states: &'a mut [u64], own: Range<usize>) -> (Self, &'a mut [u64]) {
+        let (before, rest) = states.split_at_mut(own.start);
+        let (own, after) = rest.split_at_mut(own.end - own.start);
+        (Self { before, after }, own)
+    }
+
+    /// The neighbours of a group that a term names.
+    #[inline(always)]
+    fn window<L: Lanes>(&self, term: &Term, group: usize) -> L {
+        let words = if term.after { self.after } else { self.before };
+        let at = (term.word + (group * WORDS) as isize) as usize;
+        let words: &[u64; WORDS + 1] = words[at..].first_chunk().expect("margins hold every window");
+        if term.shift == 0 {
+            let (words, _) = words.split_first_chunk().expect("a window holds a block");
+            L::load(words)
+        } else {
+            L::window(words, term.shift)
+        }
+    }
+}
+
+/// Groups to update: new values of both bounds, or of the lower one alone once they have met.
+pub struct Update<'a> {
+    /// What to do.
+    pub program: &'a Program,
+    /// The class.
+    pub class: &'a Class,
+    /// Which of its groups.
+    pub groups: Range<usize>,
+    /// Their planes.
+    pub planes: &'a [Block],
+    /// The neighbours' lower bounds.
+    pub lower: Sides<'a>,
+    /// The neighbours' upper bounds; `None` once the bounds have met.
+    pub upper: Option<Sides<'a>>,
+    /// The lower bounds of those groups.
+    pub own_lower: &'a mut [u64],
+    /// Their upper bounds.
+    pub own_upper: &'a mut [u64],
+}
+
+/// Updates groups; says whether their bounds differ.
+pub fn update(width: Width, work: Update<'_>) -> bool {
+    macro_rules! slots {
+        ($($count:literal)*) => {
+            match (work.program.slots, work.program.falling, work.upper.is_some()) {
+                $((..=$count, false, false) => call(width, Slotted::<$count, false, false>(work)),
+                (..=$count, false, true) => call(width, Slotted::<$count, false, true>(work)),
+                (..=$count, true, false) => call(width, Slotted::<$count, true, false>(work)),
+                (..=$count, true, true) => call(width, Slotted::<$count, true, true>(work)),)*
+                _ => unreachable!("a program has at most 8 slots"),
+            }
+        };
+    }
+    if work.program.rule == Rule::Exclusion {
+        return call(width, Excluding(work));
+    }
+    slots!(2 3 4 6 8)
+}
+
+struct Slotted<'a, const SLOTS: usize, const FALLING: bool, const BOTH: bool>(Update<'a>);
+
+impl<const SLOTS: usize, const FALLING: bool, const BOTH: bool> Kernel for Slotted<'_, SLOTS, FALLING, BOTH> {
+    type Output = bool;
+
+    #[inline(always)]
+    fn run<L: Lanes>(self) -> bool {
+        let work = self.0;
+        let upper = work.upper.unwrap_or(work.lower);
+        // what pulls the lower bound up at least, and the upper one at most
+        let (least, most) = if FALLING {
+            (upper, work.lower)
+        } else {
+            (work.lower, upper)
+        };
+        let rule = work.program.rule;
+        let mut differ = L::splat(0);
+        let planes = work.planes.chunks_exact(work.program.planes());
+        let own = work
+            .own_lower
+            .chunks_exact_mut(WORDS)
+            .zip(work.own_upper.chunks_exact_mut(WORDS));
+        for ((group, planes), (own_lower, own_upper)) in work.groups.zip(planes).zip(own) {
+            let pattern = &work.program.patterns[work.class.patterns[group] as usize];
+            // what pulls in each slot, then how many slots pull: two loops, so that the second, whose
+            // length is known to the compiler, works in registers
+            let mut pulls = [[L::splat(0); 2]; SLOTS];
+            let mut first = 0;
+            for (pulls, end) in pulls.iter_mut().zip(pattern.ends) {
+                let [mut pull_least, mut pull_most] = [L::splat(0); 2];
+                for term in &pattern.terms[first..end as usize] {
+                    let mask = L::load(&term.mask.0);
+                    pull_least = pull::<L, FALLING>(pull_least, least.window(term, group), mask);
+                    if BOTH {
+                        pull_most = pull::<L, FALLING>(pull_most, most.window(term, group), mask);
+                    }
+                }
+                first = end as usize;
+                *pulls = [pull_least, pull_most];
+            }
+            // reached[j]: more than j neighbours pull
+            let mut reached_least = [L::splat(0); SLOTS];
+            let mut reached_most = [L::splat(0); SLOTS];
+            for (slot, [pull_least, pull_most]) in pulls.into_iter().enumerate() {
+                count(&mut reached_least, slot, pull_least);
+                if BOTH {
+                    count(&mut reached_most, slot, pull_most);
+                }
+            }
+            let low = value(rule, planes, &reached_least);
+            low.store(own_lower.try_into().expect("chunks are as long as a block"));
+            if BOTH {
+                let high = value(rule, planes, &reached_most);
+                high.store(own_upper.try_into().expect("chunks are as long as a block"));
+                differ = differ.or(low.xor(high));
+            }
+        }
+        !differ.is_none()
+    }
+}
+
+/// The lanes of `mask` whose neighbour pulls, and those of `into`.
+#[inline(always)]
+fn pull<L: Lanes, const FALLING: bool>(into: L, neighbours: L, mask: L) -> L {
+    if FALLING {
+        into.or(mask.without(neighbours))
+    } else {
+        into.or_and(neighbours, mask)
+    }
+}
+
+/// One more neighbour, after `before` others: where it pulls, one more level is reached.
+#[inline(always)]
+fn count<L: Lanes, const SLOTS: usize>(reached: &mut [L; SLOTS], before: usize, pull: L) {
+    for level in (1..=before).rev() {
+        reached[level] = reached[level].or_and(reached[level - 1], pull);
+    }
+    reached[0] = reached[0].or(pull);
+}
+
+/// The new values, from the planes of a group and the levels that its neighbours reach.
+#[inline(always)]
+fn value<L: Lanes, const SLOTS: usize>(rule: Rule, planes: &[Block], reached: &[L; SLOTS]) -> L {
+    if rule == Rule::Folded {
+        // one plane for each pair of ranks, the innermost first
+        let pairs = SLOTS.div_ceil(2);
+        let half = L::load(&planes[0].0);
+        // U < 1/2: below the thresholds of all ranks from the middle on, and of outer ones by comparison
+        let mut low = reached[pairs - 1];
+        let mut high = L::splat(0);
+        for pair in 0..pairs {
+            let below = L::load(&planes[pairs - pair].0);
+            low = if pair == 0 {
+                low.or(L::splat(u64::MAX).without(below))
+            } else {
+                low.or(reached[pair - 1].without(below))
+            };
+            high = high.or_and(reached[SLOTS - 1 - pair], below);
+        }
+        return half.select(low, high);
+    }
+    let mut value = L::load(&planes[0].0);
+    for (reached, plane) in reached.iter().zip(&planes[1..]) {
+        value = value.or_and(*reached, L::load(&plane.0));
+    }
+    value
+}
+
+/// The lanes of a group that have an occupied neighbour.
+#[inline(always)]
+fn occupied<L: Lanes>(bound: &Sides<'_>, terms: &[Term], group: usize) -> L {
+    let mut occupied = L::splat(0);
+    for term in terms {
+        occupied = occupied.or_and(bound.window(term, group), L::load(&term.mask.0));
+    }
+    occupied
+}
+
+struct Excluding<'a>(Update<'a>);
+
+impl Kernel for Excluding<'_> {
+    type Output = bool;
+
+    #[inline(always)]
+    fn run<L: Lanes>(self) -> bool {
+        let work = self.0;
+        let mut differ = L::splat(0);
+        let own = work
+            .own_lower
+            .chunks_exact_mut(WORDS)
+            .zip(work.own_upper.chunks_exact_mut(WORDS));
+        for ((group, plane), (own_lower, own_upper)) in work.groups.zip(work.planes).zip(own) {
+            let pattern = &work.program.patterns[work.class.patterns[group] as usize];
+            let plane = L::load(&plane.0);
+            let low = plane.without(occupied::<L>(&work.upper.unwrap_or(work.lower), &pattern.terms, group));
+            low.store(own_lower.try_into().expect("chunks are as long as a block"));
+            if work.upper.is_some() {
+                let high = plane.without(occupied::<L>(&work.lower, &pattern.terms, group));
+                high.store(own_upper.try_into().expect("chunks are as long as a block"));
+                differ = differ.or(low.xor(high));
+            }
+        }
+        !differ.is_none()
+    }
+}
