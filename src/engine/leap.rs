@@ -11,12 +11,14 @@ use crate::engine::word::{Lanes, WORDS};
 pub const MULTIPLIER: u64 = 0xda94_2042_e4dd_58b5;
 /// States that vectors step at once.
 pub const CHAINS: usize = 32;
-/// States that scalar code steps at once.
-pub const FEW: usize = 4;
+/// States that scalar code steps at once: as many as its registers hold.
+const FEW: usize = 2;
 
 /// Words made ahead; the first time fewer, because many generators give only some.
 const AHEAD: usize = 512;
 const FIRST: usize = 64;
+/// Words that may be left over when more are made.
+const LEFT: usize = 64;
 
 /// The affine map of n steps: the multiplier, and what the increment is multiplied by.
 const fn leap(steps: usize) -> (u128, u128) {
@@ -29,65 +31,63 @@ const fn leap(steps: usize) -> (u128, u128) {
     (power, sum)
 }
 
-const MANY_STEPS: (u128, u128) = leap(CHAINS);
-const FEW_STEPS: (u128, u128) = leap(FEW);
+const VECTOR_STEP: (u128, u128) = leap(CHAINS);
+const LONG_RUN: (u128, u128) = leap(AHEAD / FEW);
+const SHORT_RUN: (u128, u128) = leap(FIRST / FEW);
 
-/// The states of words that follow each other, stepped together.
+/// The states of the next [`CHAINS`] words, or of the next word alone.
 #[derive(Clone)]
 pub struct Chains {
     low: [u64; CHAINS],
     high: [u64; CHAINS],
-    multiplier: u128,
     increment: u128,
 }
 
 impl Chains {
-    /// `count` states, [`CHAINS`] or [`FEW`], from `state` on.
-    fn new(mut state: u128, increment: u128, count: usize) -> Self {
-        let (multiplier, sum) = if count == CHAINS { MANY_STEPS } else { FEW_STEPS };
+    /// `count` states from `state` on: [`CHAINS`] for vectors, 1 for scalar code.
+    pub fn new(mut state: u128, increment: u128, count: usize) -> Self {
         let mut chains = Self {
             low: [0; CHAINS],
             high: [0; CHAINS],
-            multiplier,
-            increment: increment.wrapping_mul(sum),
+            increment,
         };
         for (low, high) in chains.low.iter_mut().zip(&mut chains.high).take(count) {
             (*low, *high) = (state as u64, (state >> 64) as u64);
-            state = state.wrapping_mul(u128::from(MULTIPLIER)).wrapping_add(increment);
+            state = step(state, increment);
         }
         chains
     }
 
-    /// The multiplier of all steps at once.
-    pub fn multiplier(&self) -> u128 {
-        self.multiplier
+    /// Low and high halves of all states, and the multiplier and the increment of as many steps.
+    pub fn vectors(&mut self) -> ([&mut [u64; CHAINS]; 2], [u128; 2]) {
+        let (multiplier, sum) = VECTOR_STEP;
+        let step = [multiplier, self.increment.wrapping_mul(sum)];
+        ([&mut self.low, &mut self.high], step)
     }
 
-    /// The increment of all steps at once.
-    pub fn increment(&self) -> u128 {
-        self.increment
-    }
-
-    /// Low and high halves of the states.
-    pub fn states(&mut self) -> (&mut [u64; CHAINS], &mut [u64; CHAINS]) {
-        (&mut self.low, &mut self.high)
-    }
-
-    /// The next words, [`FEW`] at a time.
+    /// The next words, [`FIRST`] or [`AHEAD`], in a few runs side by side.
     #[inline(always)]
     pub fn fill(&mut self, out: &mut [u64]) {
-        let mut states: [u128; FEW] =
-            std::array::from_fn(|chain| u128::from(self.high[chain]) << 64 | u128::from(self.low[chain]));
-        for row in out.chunks_exact_mut(FEW) {
-            for (word, state) in row.iter_mut().zip(&mut states) {
-                *word = output(*state);
-                *state = state.wrapping_mul(self.multiplier).wrapping_add(self.increment);
-            }
+        let run = out.len() / FEW;
+        let (power, sum) = if run == AHEAD / FEW { LONG_RUN } else { SHORT_RUN };
+        let mut states = [u128::from(self.high[0]) << 64 | u128::from(self.low[0]); FEW];
+        for chain in 1..FEW {
+            let jump = self.increment.wrapping_mul(sum);
+            states[chain] = states[chain - 1].wrapping_mul(power).wrapping_add(jump);
         }
-        for (chain, state) in states.into_iter().enumerate() {
-            (self.low[chain], self.high[chain]) = (state as u64, (state >> 64) as u64);
+        let (first, second) = out.split_at_mut(run);
+        for (first, second) in first.iter_mut().zip(second) {
+            (*first, *second) = (output(states[0]), output(states[1]));
+            states = states.map(|state| step(state, self.increment));
         }
+        let next = states[FEW - 1];
+        (self.low[0], self.high[0]) = (next as u64, (next >> 64) as u64);
     }
+}
+
+#[inline(always)]
+fn step(state: u128, increment: u128) -> u128 {
+    state.wrapping_mul(u128::from(MULTIPLIER)).wrapping_add(increment)
 }
 
 /// DXSM: the word of a state.
@@ -100,12 +100,17 @@ fn output(state: u128) -> u64 {
     high.wrapping_mul(low | 1)
 }
 
+/// Words made ahead, with room for a block before and behind.
+#[derive(Clone)]
+#[repr(align(64))]
+struct Buffer([u64; LEFT + AHEAD + WORDS]);
+
 /// The words of one generator, in order. All its words must be asked for at one width.
 #[derive(Clone)]
 pub struct Leap {
-    chains: Chains,
     /// Words that wait stand at `at .. end`; what was left over stands before the newly made ones.
-    words: [u64; WORDS + AHEAD + WORDS],
+    words: Buffer,
+    chains: Chains,
     at: usize,
     end: usize,
     /// Words made so far.
@@ -116,15 +121,12 @@ impl Leap {
     /// The words of the generator that is seeded with `state` and `stream`, for a width with so many chains.
     pub fn new([state, stream]: [u128; 2], chains: usize) -> Self {
         let increment = stream << 1 | 1;
-        let state = state
-            .wrapping_add(increment)
-            .wrapping_mul(u128::from(MULTIPLIER))
-            .wrapping_add(increment);
+        let state = step(state.wrapping_add(increment), increment);
         Self {
             chains: Chains::new(state, increment, chains),
-            words: [0; WORDS + AHEAD + WORDS],
-            at: WORDS,
-            end: WORDS,
+            words: Buffer([0; LEFT + AHEAD + WORDS]),
+            at: LEFT,
+            end: LEFT,
             made: 0,
         }
     }
@@ -140,18 +142,36 @@ impl Leap {
         if self.at + count > self.end {
             self.refill::<L>();
         }
-        let words = self.words[self.at..].first_chunk();
+        let words = self.words.0[self.at..].first_chunk();
         self.at += count;
         words.map_or_else(|| L::splat(0), L::load)
+    }
+
+    /// The next `count` words, not yet handed out, if words are asked for by whole blocks.
+    #[inline(always)]
+    pub fn peek<L: Lanes>(&mut self, block: usize, count: usize) -> Option<&[u64]> {
+        if block < WORDS {
+            return None;
+        }
+        if self.at + count > self.end {
+            self.refill::<L>();
+        }
+        self.words.0[..self.end].get(self.at..self.at + count)
+    }
+
+    /// Hands out `count` words that were seen.
+    #[inline(always)]
+    pub fn skip(&mut self, count: usize) {
+        self.at += count;
     }
 
     #[inline(always)]
     fn refill<L: Lanes>(&mut self) {
         let left = self.end - self.at;
-        self.words.copy_within(self.at..self.end, WORDS - left);
+        self.words.0.copy_within(self.at..self.end, LEFT - left);
         let count = if self.made == 0 { FIRST } else { AHEAD };
-        L::fill(&mut self.chains, &mut self.words[WORDS..WORDS + count]);
-        (self.at, self.end) = (WORDS - left, WORDS + count);
+        L::fill(&mut self.chains, &mut self.words.0[LEFT..LEFT + count]);
+        (self.at, self.end) = (LEFT - left, LEFT + count);
         self.made += count as u64;
     }
 }

@@ -9,7 +9,7 @@
 
 use std::fmt;
 
-use crate::engine::leap::{CHAINS, Chains, FEW};
+use crate::engine::leap::{CHAINS, Chains};
 
 /// 64-bit words of a group of 512 lanes.
 pub const WORDS: usize = 8;
@@ -49,7 +49,7 @@ impl Width {
             #[cfg(target_arch = "aarch64")]
             Self::Neon => std::arch::is_aarch64_feature_detected!("neon"),
             #[cfg(target_arch = "x86_64")]
-            Self::Avx2 => std::arch::is_x86_feature_detected!("avx2"),
+            Self::Avx2 => std::arch::is_x86_feature_detected!("avx2") && std::arch::is_x86_feature_detected!("bmi2"),
             #[cfg(all(target_arch = "x86_64", pastproof_avx512))]
             Self::Avx512 => {
                 std::arch::is_x86_feature_detected!("avx512f")
@@ -71,9 +71,9 @@ impl Width {
         Self::here().last().unwrap_or(Self::Portable)
     }
 
-    /// How many words ahead the generator of a strip is stepped at once.
+    /// How many states of a generator are kept.
     pub fn chains(self) -> usize {
-        if self == Self::Avx512 { CHAINS } else { FEW }
+        if self == Self::Avx512 { CHAINS } else { 1 }
     }
 }
 
@@ -114,7 +114,7 @@ pub trait Lanes: Copy {
     fn and_xor(self, a: Self, b: Self) -> Self;
     /// Whether no lane is 1.
     fn is_none(self) -> bool;
-    /// The next words of a generator: `out` is as long as a multiple of the width's chains.
+    /// The next words of a generator: as many as it makes ahead.
     fn fill(chains: &mut Chains, out: &mut [u64]);
 }
 
@@ -134,7 +134,7 @@ pub fn call<K: Kernel>(width: Width, kernel: K) -> K::Output {
         // SAFETY: the machine has NEON; detection reads a cached flag.
         Width::Neon if width.is_here() => unsafe { neon::call(kernel) },
         #[cfg(target_arch = "x86_64")]
-        // SAFETY: the machine has AVX2; detection reads a cached flag.
+        // SAFETY: the machine has AVX2 and BMI2; detection reads a cached flag.
         Width::Avx2 if width.is_here() => unsafe { avx2::call(kernel) },
         #[cfg(all(target_arch = "x86_64", pastproof_avx512))]
         // SAFETY: the machine has all four features; detection reads a cached flag.
@@ -312,8 +312,8 @@ mod avx2 {
     use super::{Chains, Kernel, Lanes, WORDS};
 
     /// # Safety
-    /// The machine has AVX2.
-    #[target_feature(enable = "avx2")]
+    /// The machine has AVX2 and BMI2.
+    #[target_feature(enable = "avx2,bmi2")]
     pub(super) unsafe fn call<K: Kernel>(kernel: K) -> K::Output {
         kernel.run::<Avx2>()
     }
@@ -444,7 +444,7 @@ mod avx512 {
         fn window(words: &[u64; WORDS + 1], shift: u64) -> Self {
             Self(unsafe {
                 let low = _mm512_loadu_si512(words[..WORDS].as_ptr().cast());
-                let high = _mm512_loadu_si512(words[1..].as_ptr().cast());
+                let high = _mm512_alignr_epi64::<1>(_mm512_set1_epi64(words[WORDS] as i64), low);
                 _mm512_shrdv_epi64(low, high, _mm512_set1_epi64(shift as i64))
             })
         }
@@ -501,9 +501,9 @@ mod avx512 {
                     ]
                 }
             };
-            let [a0, a1, a2] = limbs(chains.multiplier());
-            let [c0, c1, c2] = limbs(chains.increment());
-            let (low, high) = chains.states();
+            let ([low, high], [multiplier, increment]) = chains.vectors();
+            let [a0, a1, a2] = limbs(multiplier);
+            let [c0, c1, c2] = limbs(increment);
             unsafe {
                 let multiplier = _mm512_set1_epi64(MULTIPLIER as i64);
                 let one = _mm512_set1_epi64(1);

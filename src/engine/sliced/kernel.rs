@@ -30,6 +30,9 @@ pub fn decide(
     at_least!(0 1 2 3 4 5 7 9 13 17)
 }
 
+/// Digits that are taken without looking.
+const AT_ONCE: usize = 7;
+
 struct Decide<'a, const C: usize> {
     program: &'a Program,
     class: &'a Class,
@@ -75,47 +78,94 @@ fn digits<L: Lanes, const C: usize>(program: &Program, pattern: &Pattern, leap: 
         return answers;
     }
     let count = pattern.lanes.div_ceil(64);
-    // lanes whose digits so far equal those of theta
-    let mut equal = [none; C];
+    let mut race = Race {
+        equal: [none; C],
+        below: [none; C],
+        turn: all,
+    };
     let asks = |list: &[Block], at: usize| list.get(at).map_or(none, |block| L::load(&block.0));
     let mut place = 0;
-    // complemented where the lane compares U itself
-    let mut turn = all;
     if program.folded {
-        let top = leap.next::<L>(count);
-        answers.half = all.without(top);
-        turn = top;
+        race.turn = leap.next::<L>(count);
         place = 1;
-        for (at, equal) in equal.iter_mut().enumerate() {
-            *equal = top.select(asks(&pattern.asks, at), asks(&pattern.asks_mirror, at));
+        for (at, equal) in race.equal.iter_mut().enumerate() {
+            *equal = race.turn.select(asks(&pattern.asks, at), asks(&pattern.asks_mirror, at));
         }
     } else {
-        for (at, equal) in equal.iter_mut().enumerate() {
+        for (at, equal) in race.equal.iter_mut().enumerate() {
             *equal = asks(&pattern.asks, at);
         }
     }
-    loop {
-        let open = equal.iter().fold(none, |open, equal| open.or(*equal));
-        if open.is_none() {
-            return answers;
+    // a whole group is hardly ever decided within the first digits: take them without looking, and
+    // start again in the rare case that it was
+    if let Some(words) = leap.peek::<L>(count, AT_ONCE * WORDS) {
+        let mut ahead = race;
+        for (digits, words) in words.chunks_exact(WORDS).enumerate() {
+            let word = words.first_chunk().map_or(none, L::load);
+            ahead.digit(program, place + digits, word);
         }
-        let opposite = leap.next::<L>(count).xor(turn);
+        if !ahead.is_over() {
+            leap.skip(AT_ONCE * WORDS);
+            place += AT_ONCE;
+            race = ahead;
+        }
+    }
+    while !race.is_over() {
+        let word = leap.next::<L>(count);
+        race.digit(program, place, word);
+        place += 1;
+    }
+    answers.half = if program.folded { all.without(race.turn) } else { none };
+    answers.below = race.below;
+    answers
+}
+
+/// The comparisons of a group as far as they are.
+#[derive(Clone, Copy)]
+struct Race<L, const C: usize> {
+    /// Lanes whose digits so far equal those of theta.
+    equal: [L; C],
+    /// Lanes below theta, where the digits differ.
+    below: [L; C],
+    /// Lanes that compare U itself, not its complement.
+    turn: L,
+}
+
+impl<L: Lanes, const C: usize> Race<L, C> {
+    #[inline(always)]
+    fn is_over(&self) -> bool {
+        let mut open = L::splat(0);
+        for equal in self.equal {
+            open = open.or(equal);
+        }
+        open.is_none()
+    }
+
+    /// One more digit of each lane, the one at `place`.
+    #[inline(always)]
+    fn digit(&mut self, program: &Program, place: usize, word: L) {
+        let opposite = word.xor(self.turn);
         let bits = &program.digits[place];
         for at in 0..C {
             // at the first digit that differs, U is below theta exactly if its digit is 0
-            answers.below[at] = equal[at].select(opposite, answers.below[at]);
-            equal[at] = equal[at].and_xor(opposite, L::splat(bits[at]));
+            self.below[at] = self.equal[at].select(opposite, self.below[at]);
+            self.equal[at] = self.equal[at].and_xor(opposite, L::splat(bits[at]));
         }
-        place += 1;
-        if program.endings[place] {
-            for (equal, comparison) in equal.iter_mut().zip(&program.comparisons) {
-                let itself = if program.folded { turn } else { all };
-                if comparison.ends as usize == place {
-                    *equal = equal.without(itself);
-                }
-                if comparison.mirror_ends as usize == place {
-                    *equal = equal.and(itself);
-                }
+        if program.endings[place + 1] {
+            self.end(program, place + 1);
+        }
+    }
+
+    /// Equal leading digits decide where the rest of theta (or of its mirror) is zero.
+    #[inline(always)]
+    fn end(&mut self, program: &Program, digits: usize) {
+        let itself = if program.folded { self.turn } else { L::splat(u64::MAX) };
+        for (equal, comparison) in self.equal.iter_mut().zip(&program.comparisons) {
+            if comparison.ends as usize == digits {
+                *equal = equal.without(itself);
+            }
+            if comparison.mirror_ends as usize == digits {
+                *equal = equal.and(itself);
             }
         }
     }

@@ -53,9 +53,31 @@ pub struct Sliced<'a> {
 
 /// Both bounds in lane order; the upper one is out of date once they have met.
 struct Bounds {
-    lower: Vec<u64>,
-    upper: Vec<u64>,
+    lower: States,
+    upper: States,
     met: bool,
+}
+
+/// One bound, from the beginning of a cache line on.
+struct States {
+    words: Vec<u64>,
+    first: usize,
+}
+
+impl States {
+    fn new(words: usize) -> Self {
+        let words = vec![0; words + WORDS];
+        let first = words.as_ptr().align_offset(size_of::<Block>()).min(WORDS);
+        Self { words, first }
+    }
+
+    fn all(&self) -> &[u64] {
+        &self.words[self.first..]
+    }
+
+    fn all_mut(&mut self) -> &mut [u64] {
+        &mut self.words[self.first..]
+    }
 }
 
 /// Where the planes of a class or of a strip come from.
@@ -102,8 +124,8 @@ impl<'a> Sliced<'a> {
             width,
             strips,
             bounds: Bounds {
-                lower: vec![0; program.words],
-                upper: vec![0; program.words],
+                lower: States::new(program.words),
+                upper: States::new(program.words),
                 met: false,
             },
             store: Store::new(bytes),
@@ -192,8 +214,8 @@ impl Bounds {
         let class = &program.classes[number];
         let size = program.planes();
         let own = class.start..class.start + class.groups() * WORDS;
-        let (lower, own_lower) = Sides::around(&mut self.lower, own.clone());
-        let (upper, own_upper) = Sides::around(&mut self.upper, own);
+        let (lower, own_lower) = Sides::around(self.lower.all_mut(), own.clone());
+        let (upper, own_upper) = Sides::around(self.upper.all_mut(), own);
         let upper = (!self.met).then_some(upper);
         let work = |strip: Strip<'_>| {
             let mut differ = false;
@@ -273,8 +295,8 @@ impl Strips {
 impl Engine for Sliced<'_> {
     fn attempt(&mut self, address: &Address, depth: u8, stop: &Stop) -> Result<Attempt> {
         self.store.turn_to(address);
-        self.bounds.lower.fill(0);
-        self.bounds.upper.fill(u64::MAX);
+        self.bounds.lower.words.fill(0);
+        self.bounds.upper.words.fill(u64::MAX);
         self.bounds.met = false;
         let (mut words, mut merged_at, mut left) = (0, None, 1u64 << depth);
         for epoch in (0..=depth).rev() {
@@ -289,11 +311,11 @@ impl Engine for Sliced<'_> {
     }
 
     fn bounds(&self) -> [Configuration; 2] {
-        let lower = self.configuration(&self.bounds.lower);
+        let lower = self.configuration(self.bounds.lower.all());
         let upper = if self.bounds.met {
             lower.clone()
         } else {
-            self.configuration(&self.bounds.upper)
+            self.configuration(self.bounds.upper.all())
         };
         [lower, upper]
     }

@@ -28,8 +28,9 @@ const MOST_TERMS: usize = 96;
 const MOST_PATTERN_BYTES: usize = 1 << 26;
 /// Neighbours for which the folded rule is compiled.
 const FOLDED_SLOTS: [usize; 5] = [2, 3, 4, 6, 8];
-/// Words before and behind the states of a class, where windows may reach.
-pub const MARGIN: usize = WORDS + 1;
+/// Words before and behind the states of a class, where windows may reach; whole blocks, so that
+/// groups lie where cache lines begin.
+pub const MARGIN: usize = 2 * WORDS;
 
 /// How answers and the number of pulling neighbours make a value. A neighbour pulls if it makes +1
 /// likelier: by being +1 where the threshold grows with it, else by being -1.
