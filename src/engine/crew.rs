@@ -12,7 +12,7 @@ use crate::engine::Engine;
 use crate::engine::plain::Plain;
 use crate::engine::sliced::program::Program;
 use crate::engine::sliced::{Sliced, Strips};
-use crate::engine::word::Width;
+use crate::engine::word::{Width, Words};
 use crate::error::{Error, Result};
 use crate::random_map::RandomMap;
 
@@ -68,7 +68,7 @@ impl Settings {
 /// What an engine works from, made once for a law.
 enum Compiled {
     Plain,
-    Sliced(Box<Program>, Width),
+    Sliced(Box<Program>, Words),
 }
 
 /// Engines for one law, as many as threads need.
@@ -94,7 +94,10 @@ impl<'a> Crew<'a> {
         let compiled = match settings.engine {
             Choice::Plain => Compiled::Plain,
             Choice::Automatic => match Program::new(map) {
-                Some(program) => Compiled::Sliced(Box::new(program), settings.width.unwrap_or_else(Width::widest)),
+                Some(program) => Compiled::Sliced(
+                    Box::new(program),
+                    settings.width.and_then(Width::words).unwrap_or_else(Width::widest),
+                ),
                 None => Compiled::Plain,
             },
         };
@@ -115,7 +118,7 @@ impl<'a> Crew<'a> {
         let memory = self.memory / count as u64;
         match &self.compiled {
             Compiled::Plain => Box::new(Plain::new(self.map)),
-            Compiled::Sliced(program, width) => Box::new(Sliced::new(self.map, program, *width, strips, memory)),
+            Compiled::Sliced(program, words) => Box::new(Sliced::new(self.map, program, *words, strips, memory)),
         }
     }
 
@@ -178,7 +181,7 @@ impl fmt::Display for Crew<'_> {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match &self.compiled {
             Compiled::Plain => write!(f, "plain engine"),
-            Compiled::Sliced(_, width) => write!(f, "bit-sliced engine, {width}"),
+            Compiled::Sliced(_, words) => write!(f, "bit-sliced engine, {}", words.width()),
         }
     }
 }

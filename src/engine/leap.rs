@@ -139,27 +139,28 @@ impl Leap {
     /// The next `count` words (at most eight), followed by anything.
     #[inline(always)]
     pub fn next<L: Lanes>(&mut self, count: usize) -> L {
+        self.make_ready::<L>(count);
+        let words = self.glance(0);
+        self.skip(count);
+        words
+    }
+
+    /// Makes sure that `count` words wait: at most [`LEFT`].
+    #[inline(always)]
+    pub fn make_ready<L: Lanes>(&mut self, count: usize) {
         if self.at + count > self.end {
             self.refill::<L>();
         }
-        let words = self.words.0[self.at..].first_chunk();
-        self.at += count;
+    }
+
+    /// Words that wait, from the one at `offset` on, followed by anything; none is handed out.
+    #[inline(always)]
+    pub fn glance<L: Lanes>(&self, offset: usize) -> L {
+        let words = self.words.0[self.at + offset..].first_chunk();
         words.map_or_else(|| L::splat(0), L::load)
     }
 
-    /// The next `count` words, not yet handed out, if words are asked for by whole blocks.
-    #[inline(always)]
-    pub fn peek<L: Lanes>(&mut self, block: usize, count: usize) -> Option<&[u64]> {
-        if block < WORDS {
-            return None;
-        }
-        if self.at + count > self.end {
-            self.refill::<L>();
-        }
-        self.words.0[..self.end].get(self.at..self.at + count)
-    }
-
-    /// Hands out `count` words that were seen.
+    /// Hands out `count` words that were made ready.
     #[inline(always)]
     pub fn skip(&mut self, count: usize) {
         self.at += count;
@@ -168,7 +169,9 @@ impl Leap {
     #[inline(always)]
     fn refill<L: Lanes>(&mut self) {
         let left = self.end - self.at;
-        self.words.0.copy_within(self.at..self.end, LEFT - left);
+        // always as many as there is room for: a copy of known length
+        let last: [u64; LEFT] = std::array::from_fn(|at| self.words.0[self.end - LEFT + at]);
+        self.words.0[..LEFT].copy_from_slice(&last);
         let count = if self.made == 0 { FIRST } else { AHEAD };
         L::fill(&mut self.chains, &mut self.words.0[LEFT..LEFT + count]);
         (self.at, self.end) = (LEFT - left, LEFT + count);

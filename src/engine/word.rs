@@ -1,10 +1,10 @@
 //! 512 lanes at a time, at the widest words that the processor has.
 //!
 //! [`Lanes`] is what a kernel may do with the 512 bits of a group, and with the generator of a strip;
-//! [`call`] runs a kernel at a [`Width`]. All widths give the same bits. This is the only file with
+//! [`call`] runs a kernel with words of a [`Width`]. All widths give the same bits. This is the only file with
 //! unsafe code, and all of it has one reason: an instruction may be used only where the processor
 //! has it. The vector types are private and exist only while [`call`] runs a kernel, and [`call`]
-//! runs a kernel at a width only after [`Width::is_here`] has said that the machine has it.
+//! needs [`Words`], which exist only for a width that [`Width::is_here`] has found.
 #![expect(unsafe_code, reason = "vector instructions; see the module comment")]
 
 use std::fmt;
@@ -66,9 +66,14 @@ impl Width {
         Self::ALL.into_iter().filter(|width| width.is_here())
     }
 
-    /// The widest one of this machine.
-    pub fn widest() -> Self {
-        Self::here().last().unwrap_or(Self::Portable)
+    /// The widest words of this machine.
+    pub fn widest() -> Words {
+        Words(Self::here().last().unwrap_or(Self::Portable))
+    }
+
+    /// Words as wide as that, if this machine has them.
+    pub fn words(self) -> Option<Words> {
+        self.is_here().then_some(Words(self))
     }
 
     /// How many states of a generator are kept.
@@ -126,19 +131,30 @@ pub trait Kernel {
     fn run<L: Lanes>(self) -> Self::Output;
 }
 
-/// Runs a kernel at `width`, or at the portable one where the machine has no such words.
+/// Words of a width that this machine has: only [`Width::words`] makes one.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub struct Words(Width);
+
+impl Words {
+    /// How wide they are.
+    pub fn width(self) -> Width {
+        self.0
+    }
+}
+
+/// Runs a kernel with such words.
 #[inline]
-pub fn call<K: Kernel>(width: Width, kernel: K) -> K::Output {
-    match width {
+pub fn call<K: Kernel>(words: Words, kernel: K) -> K::Output {
+    match words.0 {
         #[cfg(target_arch = "aarch64")]
-        // SAFETY: the machine has NEON; detection reads a cached flag.
-        Width::Neon if width.is_here() => unsafe { neon::call(kernel) },
+        // SAFETY: the machine has NEON, or there were no such words.
+        Width::Neon => unsafe { neon::call(kernel) },
         #[cfg(target_arch = "x86_64")]
-        // SAFETY: the machine has AVX2 and BMI2; detection reads a cached flag.
-        Width::Avx2 if width.is_here() => unsafe { avx2::call(kernel) },
+        // SAFETY: the machine has AVX2 and BMI2, or there were no such words.
+        Width::Avx2 => unsafe { avx2::call(kernel) },
         #[cfg(all(target_arch = "x86_64", pastproof_avx512))]
-        // SAFETY: the machine has all four features; detection reads a cached flag.
-        Width::Avx512 if width.is_here() => unsafe { avx512::call(kernel) },
+        // SAFETY: the machine has all four features, or there were no such words.
+        Width::Avx512 => unsafe { avx512::call(kernel) },
         _ => kernel.run::<Portable>(),
     }
 }

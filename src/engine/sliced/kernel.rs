@@ -7,14 +7,32 @@
 use std::ops::Range;
 
 use crate::engine::leap::Leap;
-use crate::engine::sliced::program::{Class, Form, MOST_COMPARISONS, Pattern, Program, Rule, Term};
-use crate::engine::word::{Block, Kernel, Lanes, WORDS, Width, call};
+use crate::engine::sliced::program::{Class, Form, MOST_COMPARISONS, MOST_SLOTS, Pattern, Program, Rule, Term};
+use crate::engine::word::{Block, Kernel, Lanes, WORDS, Words, call};
 
-/// Draws the digits of `groups` and leaves their planes, group after group.
+/// Draws the digits of `groups` of a class and leaves their planes, group after group.
 pub fn decide(
-    width: Width,
+    words: Words,
     program: &Program,
     class: &Class,
+    groups: Range<usize>,
+    leap: &mut Leap,
+    planes: &mut [Block],
+) {
+    let classes = std::slice::from_ref(class);
+    decide_lists(words, program, classes, groups, leap, planes);
+}
+
+/// Draws the digits of whole sweeps of a program of one strip and leaves their planes.
+pub fn decide_sweeps(words: Words, program: &Program, leap: &mut Leap, planes: &mut [Block]) {
+    decide_lists(words, program, &program.classes, 0..usize::MAX, leap, planes);
+}
+
+/// Draws the digits of `groups` of each class in turn, over and over until all planes are filled.
+fn decide_lists(
+    words: Words,
+    program: &Program,
+    classes: &[Class],
     groups: Range<usize>,
     leap: &mut Leap,
     planes: &mut [Block],
@@ -22,7 +40,7 @@ pub fn decide(
     macro_rules! at_least {
         ($($count:literal)*) => {
             match program.comparisons.len() {
-                $(..=$count => call(width, Decide::<$count> { program, class, groups, leap, planes }),)*
+                $(..=$count => call(words, Decide::<$count> { program, classes, groups, leap, planes }),)*
                 _ => unreachable!("a program has at most {MOST_COMPARISONS} comparisons"),
             }
         };
@@ -30,12 +48,9 @@ pub fn decide(
     at_least!(0 1 2 3 4 5 7 9 13 17)
 }
 
-/// Digits that are taken without looking.
-const AT_ONCE: usize = 7;
-
 struct Decide<'a, const C: usize> {
     program: &'a Program,
-    class: &'a Class,
+    classes: &'a [Class],
     groups: Range<usize>,
     leap: &'a mut Leap,
     planes: &'a mut [Block],
@@ -46,11 +61,16 @@ impl<const C: usize> Kernel for Decide<'_, C> {
 
     #[inline(always)]
     fn run<L: Lanes>(self) {
-        let planes = self.planes.chunks_exact_mut(self.program.planes());
-        for (pattern, planes) in self.class.patterns[self.groups].iter().zip(planes) {
-            let pattern = &self.program.patterns[*pattern as usize];
-            let answers = digits::<L, C>(self.program, pattern, self.leap);
-            answers.write(self.program, pattern, planes);
+        let mut planes = self.planes.chunks_exact_mut(self.program.planes());
+        while planes.len() > 0 {
+            for class in self.classes {
+                let end = self.groups.end.min(class.groups());
+                for (pattern, planes) in class.patterns[self.groups.start..end].iter().zip(&mut planes) {
+                    let pattern = &self.program.patterns[*pattern as usize];
+                    let answers = digits::<L, C>(self.program, pattern, self.leap);
+                    answers.write(self.program, pattern, planes);
+                }
+            }
         }
     }
 }
@@ -89,26 +109,26 @@ fn digits<L: Lanes, const C: usize>(program: &Program, pattern: &Pattern, leap: 
         race.turn = leap.next::<L>(count);
         place = 1;
         for (at, equal) in race.equal.iter_mut().enumerate() {
-            *equal = race.turn.select(asks(&pattern.asks, at), asks(&pattern.asks_mirror, at));
+            *equal = race
+                .turn
+                .select(asks(&pattern.asks, at), asks(&pattern.asks_mirror, at));
         }
     } else {
         for (at, equal) in race.equal.iter_mut().enumerate() {
             *equal = asks(&pattern.asks, at);
         }
     }
-    // a whole group is hardly ever decided within the first digits: take them without looking, and
-    // start again in the rare case that it was
-    if let Some(words) = leap.peek::<L>(count, AT_ONCE * WORDS) {
-        let mut ahead = race;
-        for (digits, words) in words.chunks_exact(WORDS).enumerate() {
-            let word = words.first_chunk().map_or(none, L::load);
-            ahead.digit(program, place + digits, word);
-        }
-        if !ahead.is_over() {
-            leap.skip(AT_ONCE * WORDS);
-            place += AT_ONCE;
-            race = ahead;
-        }
+    // a group is hardly ever decided within its first digits: take them without looking, and start
+    // again in the rare case that it was
+    leap.make_ready::<L>(pattern.sure * count);
+    let mut ahead = race;
+    for digits in 0..pattern.sure {
+        ahead.digit(program, place + digits, leap.glance(digits * count));
+    }
+    if !ahead.is_over() {
+        leap.skip(pattern.sure * count);
+        place += pattern.sure;
+        race = ahead;
     }
     while !race.is_over() {
         let word = leap.next::<L>(count);
@@ -255,84 +275,176 @@ pub struct Update<'a> {
     pub own_upper: &'a mut [u64],
 }
 
-/// Updates groups; says whether their bounds differ.
-pub fn update(width: Width, work: Update<'_>) -> bool {
-    macro_rules! slots {
-        ($($count:literal)*) => {
-            match (work.program.slots, work.program.falling, work.upper.is_some()) {
-                $((..=$count, false, false) => call(width, Slotted::<$count, false, false>(work)),
-                (..=$count, false, true) => call(width, Slotted::<$count, false, true>(work)),
-                (..=$count, true, false) => call(width, Slotted::<$count, true, false>(work)),
-                (..=$count, true, true) => call(width, Slotted::<$count, true, true>(work)),)*
-                _ => unreachable!("a program has at most 8 slots"),
-            }
-        };
-    }
-    if work.program.rule == Rule::Exclusion {
-        return call(width, Excluding(work));
-    }
-    slots!(2 3 4 6 8)
+/// Whole sweeps to make, by a program of one strip.
+pub struct Sweeps<'a> {
+    /// What to do.
+    pub program: &'a Program,
+    /// Planes of the sweeps.
+    pub planes: &'a [Block],
+    /// The lower bounds.
+    pub lower: &'a mut [u64],
+    /// The upper bounds.
+    pub upper: &'a mut [u64],
+    /// Whether the bounds have met before.
+    pub met: bool,
 }
 
-struct Slotted<'a, const SLOTS: usize, const FALLING: bool, const BOTH: bool>(Update<'a>);
+/// Runs a kernel for the neighbours of a program: 0 stands for the rule of exclusion, which does not count them.
+macro_rules! compiled {
+    ($kernel:ident($work:expr), $words:expr, $program:expr, $both:expr, $($slots:literal)*) => {
+        match ($program.slots_to_count(), $program.falling, $both) {
+            $((..=$slots, false, false) => call($words, $kernel::<$slots, false, false>($work)),
+            (..=$slots, false, true) => call($words, $kernel::<$slots, false, true>($work)),
+            (..=$slots, true, false) => call($words, $kernel::<$slots, true, false>($work)),
+            (..=$slots, true, true) => call($words, $kernel::<$slots, true, true>($work)),)*
+            _ => unreachable!("a program has at most {MOST_SLOTS} slots"),
+        }
+    };
+}
 
-impl<const SLOTS: usize, const FALLING: bool, const BOTH: bool> Kernel for Slotted<'_, SLOTS, FALLING, BOTH> {
+/// Updates groups; says whether their bounds differ.
+pub fn update(words: Words, work: Update<'_>) -> bool {
+    compiled!(Groups(work), words, work.program, work.upper.is_some(), 0 2 3 4 6 8)
+}
+
+/// Makes sweeps until all are made or the bounds meet; gives the number of sweeps made, and whether the
+/// bounds are equal.
+pub fn sweep(words: Words, work: Sweeps<'_>) -> (usize, bool) {
+    compiled!(Sweeping(work), words, work.program, !work.met, 0 2 3 4 6 8)
+}
+
+struct Groups<'a, const SLOTS: usize, const FALLING: bool, const BOTH: bool>(Update<'a>);
+
+impl<const SLOTS: usize, const FALLING: bool, const BOTH: bool> Kernel for Groups<'_, SLOTS, FALLING, BOTH> {
     type Output = bool;
 
     #[inline(always)]
     fn run<L: Lanes>(self) -> bool {
+        !update_groups::<L, SLOTS, FALLING, BOTH>(self.0).is_none()
+    }
+}
+
+struct Sweeping<'a, const SLOTS: usize, const FALLING: bool, const BOTH: bool>(Sweeps<'a>);
+
+impl<const SLOTS: usize, const FALLING: bool, const BOTH: bool> Kernel for Sweeping<'_, SLOTS, FALLING, BOTH> {
+    type Output = (usize, bool);
+
+    #[inline(always)]
+    fn run<L: Lanes>(self) -> (usize, bool) {
         let work = self.0;
-        let upper = work.upper.unwrap_or(work.lower);
-        // what pulls the lower bound up at least, and the upper one at most
-        let (least, most) = if FALLING {
-            (upper, work.lower)
-        } else {
-            (work.lower, upper)
-        };
-        let rule = work.program.rule;
-        let mut differ = L::splat(0);
-        let planes = work.planes.chunks_exact(work.program.planes());
-        let own = work
-            .own_lower
-            .chunks_exact_mut(WORDS)
-            .zip(work.own_upper.chunks_exact_mut(WORDS));
-        for ((group, planes), (own_lower, own_upper)) in work.groups.zip(planes).zip(own) {
-            let pattern = &work.program.patterns[work.class.patterns[group] as usize];
-            // what pulls in each slot, then how many slots pull: two loops, so that the second, whose
-            // length is known to the compiler, works in registers
-            let mut pulls = [[L::splat(0); 2]; SLOTS];
-            let mut first = 0;
-            for (pulls, end) in pulls.iter_mut().zip(pattern.ends) {
-                let [mut pull_least, mut pull_most] = [L::splat(0); 2];
-                for term in &pattern.terms[first..end as usize] {
-                    let mask = L::load(&term.mask.0);
-                    pull_least = pull::<L, FALLING>(pull_least, least.window(term, group), mask);
-                    if BOTH {
-                        pull_most = pull::<L, FALLING>(pull_most, most.window(term, group), mask);
-                    }
-                }
-                first = end as usize;
-                *pulls = [pull_least, pull_most];
+        let mut made = 0;
+        for mut planes in work.planes.chunks_exact(work.program.planes_of_sweep()) {
+            let mut differ = L::splat(0);
+            for class in &work.program.classes {
+                let own = class.start..class.start + class.groups() * WORDS;
+                let (lower, own_lower) = Sides::around(work.lower, own.clone());
+                let (upper, own_upper) = Sides::around(work.upper, own);
+                let (now, later) = planes.split_at(class.groups() * work.program.planes());
+                planes = later;
+                differ = differ.or(update_groups::<L, SLOTS, FALLING, BOTH>(Update {
+                    program: work.program,
+                    class,
+                    groups: 0..class.groups(),
+                    planes: now,
+                    lower,
+                    upper: BOTH.then_some(upper),
+                    own_lower,
+                    own_upper,
+                }));
             }
-            // reached[j]: more than j neighbours pull
-            let mut reached_least = [L::splat(0); SLOTS];
-            let mut reached_most = [L::splat(0); SLOTS];
-            for (slot, [pull_least, pull_most]) in pulls.into_iter().enumerate() {
-                count(&mut reached_least, slot, pull_least);
-                if BOTH {
-                    count(&mut reached_most, slot, pull_most);
-                }
-            }
-            let low = value(rule, planes, &reached_least);
-            low.store(own_lower.try_into().expect("chunks are as long as a block"));
-            if BOTH {
-                let high = value(rule, planes, &reached_most);
-                high.store(own_upper.try_into().expect("chunks are as long as a block"));
-                differ = differ.or(low.xor(high));
+            made += 1;
+            if BOTH && differ.is_none() {
+                return (made, true);
             }
         }
-        !differ.is_none()
+        (made, work.met)
     }
+}
+
+/// New values of groups; gives the lanes whose bounds differ, in any group.
+#[inline(always)]
+fn update_groups<L: Lanes, const SLOTS: usize, const FALLING: bool, const BOTH: bool>(work: Update<'_>) -> L {
+    let upper = work.upper.unwrap_or(work.lower);
+    // what pulls the lower bound up at least, and the upper one at most
+    let (least, most) = if FALLING {
+        (upper, work.lower)
+    } else {
+        (work.lower, upper)
+    };
+    let rule = work.program.rule;
+    let mut differ = L::splat(0);
+    let planes = work.planes.chunks_exact(work.program.planes());
+    let own = work
+        .own_lower
+        .chunks_exact_mut(WORDS)
+        .zip(work.own_upper.chunks_exact_mut(WORDS));
+    for ((group, planes), (own_lower, own_upper)) in work.groups.zip(planes).zip(own) {
+        let pattern = &work.program.patterns[work.class.patterns[group] as usize];
+        let [low, high] = if SLOTS == 0 {
+            let plane = L::load(&planes[0].0);
+            [
+                plane.without(occupied(&least, &pattern.terms, group)),
+                if BOTH {
+                    plane.without(occupied(&most, &pattern.terms, group))
+                } else {
+                    plane
+                },
+            ]
+        } else {
+            let [reached_least, reached_most] = reached::<L, SLOTS, FALLING, BOTH>(pattern, group, &least, &most);
+            [value(rule, planes, &reached_least), value(rule, planes, &reached_most)]
+        };
+        low.store(own_lower.try_into().expect("chunks are as long as a block"));
+        if BOTH {
+            high.store(own_upper.try_into().expect("chunks are as long as a block"));
+            differ = differ.or(low.xor(high));
+        }
+    }
+    differ
+}
+
+/// For both bounds, the lanes where more than 0, 1, 2, ... neighbours pull.
+#[inline(always)]
+fn reached<L: Lanes, const SLOTS: usize, const FALLING: bool, const BOTH: bool>(
+    pattern: &Pattern,
+    group: usize,
+    least: &Sides<'_>,
+    most: &Sides<'_>,
+) -> [[L; SLOTS]; 2] {
+    // what pulls in each slot, then how many slots pull: two loops, so that the second, whose length
+    // is known to the compiler, works in registers
+    let mut pulls = [[L::splat(0); 2]; SLOTS];
+    let mut first = 0;
+    for (pulls, end) in pulls.iter_mut().zip(pattern.ends) {
+        let [mut pull_least, mut pull_most] = [L::splat(0); 2];
+        for term in &pattern.terms[first..end as usize] {
+            let mask = L::load(&term.mask.0);
+            pull_least = pull::<L, FALLING>(pull_least, least.window(term, group), mask);
+            if BOTH {
+                pull_most = pull::<L, FALLING>(pull_most, most.window(term, group), mask);
+            }
+        }
+        first = end as usize;
+        *pulls = [pull_least, pull_most];
+    }
+    let mut reached = [[L::splat(0); SLOTS]; 2];
+    for (slot, [pull_least, pull_most]) in pulls.into_iter().enumerate() {
+        count(&mut reached[0], slot, pull_least);
+        if BOTH {
+            count(&mut reached[1], slot, pull_most);
+        }
+    }
+    reached
+}
+
+/// The lanes of a group that have an occupied neighbour.
+#[inline(always)]
+fn occupied<L: Lanes>(bound: &Sides<'_>, terms: &[Term], group: usize) -> L {
+    let mut occupied = L::splat(0);
+    for term in terms {
+        occupied = occupied.or_and(bound.window(term, group), L::load(&term.mask.0));
+    }
+    occupied
 }
 
 /// The lanes of `mask` whose neighbour pulls, and those of `into`.
@@ -380,42 +492,4 @@ fn value<L: Lanes, const SLOTS: usize>(rule: Rule, planes: &[Block], reached: &[
         value = value.or_and(*reached, L::load(&plane.0));
     }
     value
-}
-
-/// The lanes of a group that have an occupied neighbour.
-#[inline(always)]
-fn occupied<L: Lanes>(bound: &Sides<'_>, terms: &[Term], group: usize) -> L {
-    let mut occupied = L::splat(0);
-    for term in terms {
-        occupied = occupied.or_and(bound.window(term, group), L::load(&term.mask.0));
-    }
-    occupied
-}
-
-struct Excluding<'a>(Update<'a>);
-
-impl Kernel for Excluding<'_> {
-    type Output = bool;
-
-    #[inline(always)]
-    fn run<L: Lanes>(self) -> bool {
-        let work = self.0;
-        let mut differ = L::splat(0);
-        let own = work
-            .own_lower
-            .chunks_exact_mut(WORDS)
-            .zip(work.own_upper.chunks_exact_mut(WORDS));
-        for ((group, plane), (own_lower, own_upper)) in work.groups.zip(work.planes).zip(own) {
-            let pattern = &work.program.patterns[work.class.patterns[group] as usize];
-            let plane = L::load(&plane.0);
-            let low = plane.without(occupied::<L>(&work.upper.unwrap_or(work.lower), &pattern.terms, group));
-            low.store(own_lower.try_into().expect("chunks are as long as a block"));
-            if work.upper.is_some() {
-                let high = plane.without(occupied::<L>(&work.lower, &pattern.terms, group));
-                high.store(own_upper.try_into().expect("chunks are as long as a block"));
-                differ = differ.or(low.xor(high));
-            }
-        }
-        !differ.is_none()
-    }
 }

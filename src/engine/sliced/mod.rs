@@ -18,10 +18,10 @@ use crate::engine::Attempt;
 use crate::engine::Engine;
 use crate::engine::Stop;
 use crate::engine::leap::Leap;
-use crate::engine::sliced::kernel::{Sides, Update, decide, update};
+use crate::engine::sliced::kernel::{Sides, Sweeps, Update, decide, decide_sweeps, sweep, update};
 use crate::engine::sliced::program::Program;
 use crate::engine::sliced::store::Store;
-use crate::engine::word::{Block, WORDS, Width};
+use crate::engine::word::{Block, WORDS, Words};
 use crate::error::Result;
 use crate::random_map::RandomMap;
 use crate::sample::Configuration;
@@ -29,6 +29,9 @@ use crate::stream::{Address, STRIP};
 
 /// Groups whose planes are made before they are used: they stay in the nearest cache.
 const BATCH: usize = 16;
+
+/// Blocks of planes of the sweeps that a small system makes at a time: they stay in that cache too.
+const TOGETHER: usize = 96;
 
 /// How strips are worked on.
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
@@ -43,12 +46,14 @@ pub enum Strips {
 pub struct Sliced<'a> {
     map: &'a RandomMap,
     program: &'a Program,
-    width: Width,
+    words: Words,
     strips: Strips,
     bounds: Bounds,
     store: Store,
     /// Planes that are used at once and not kept: one batch for each strip.
     batches: Vec<Block>,
+    /// Sweeps that a small system makes at a time; 0 for a large one.
+    together: u64,
 }
 
 /// Both bounds in lane order; the upper one is out of date once they have met.
@@ -117,11 +122,11 @@ impl<'a> Strip<'a> {
 
 impl<'a> Sliced<'a> {
     /// An engine for `map` by its `program`, which may keep planes in so many bytes.
-    pub fn new(map: &'a RandomMap, program: &'a Program, width: Width, strips: Strips, bytes: u64) -> Self {
+    pub fn new(map: &'a RandomMap, program: &'a Program, words: Words, strips: Strips, bytes: u64) -> Self {
         Self {
             map,
             program,
-            width,
+            words,
             strips,
             bounds: Bounds {
                 lower: States::new(program.words),
@@ -129,24 +134,27 @@ impl<'a> Sliced<'a> {
                 met: false,
             },
             store: Store::new(bytes),
-            batches: vec![Block::NONE; program.strips() * BATCH * program.planes()],
+            batches: vec![Block::NONE; (program.strips() * BATCH * program.planes()).max(TOGETHER)],
+            together: (TOGETHER / program.planes_of_sweep().max(1)) as u64,
         }
     }
 
-    /// Applies one epoch; `swept` is told after each sweep whether the bounds are equal. Gives the words
+    /// Applies one epoch; `swept` is told how many more sweeps are made, and
+    /// whether the bounds are equal after the last of them: it ends where they become so. Gives the words
     /// that its generators gave.
-    fn epoch(&mut self, address: &Address, epoch: u8, stop: &Stop, mut swept: impl FnMut(bool)) -> Result<u64> {
+    fn epoch(&mut self, address: &Address, epoch: u8, stop: &Stop, mut swept: impl FnMut(usize, bool)) -> Result<u64> {
         let (program, size) = (self.program, self.program.planes_of_sweep());
         let sweeps = if epoch == 0 { 1 } else { 1u64 << (epoch - 1) };
         let (kept, allowed) = self.store.epoch(usize::from(epoch), size);
         let mut leaps = std::mem::take(&mut kept.leaps);
         if leaps.is_empty() {
             let seeding = |strip| address.seeding(u32::from(epoch), u32::try_from(strip).unwrap_or(u32::MAX));
-            leaps.extend((0..program.strips()).map(|strip| Leap::new(seeding(strip), self.width.chains())));
+            leaps.extend((0..program.strips()).map(|strip| Leap::new(seeding(strip), self.words.width().chains())));
         }
         // the generators as they are after the kept sweeps, once sweeps are made that are not kept
         let mut at_kept = None;
-        for sweep in 0..sweeps {
+        let mut sweep = 0;
+        while sweep < sweeps {
             if let Err(stopped) = stop.check() {
                 self.store.forget();
                 return Err(stopped);
@@ -154,30 +162,50 @@ impl<'a> Sliced<'a> {
             let start = usize::try_from(sweep).unwrap_or(usize::MAX).saturating_mul(size);
             let is_kept = start < kept.planes.len();
             let keeps = !is_kept && sweep < allowed;
+            // a small system makes several sweeps of one kind at a time
+            let end = match (is_kept, keeps) {
+                (true, _) => (kept.planes.len() / size) as u64,
+                (_, true) => sweeps.min(allowed),
+                _ => sweeps,
+            };
+            let count = self.together.min(end - sweep).max(1);
+            let blocks = count as usize * size;
             if keeps {
-                let all = usize::try_from(sweeps.min(allowed)).unwrap_or(usize::MAX);
-                kept.planes
-                    .reserve_exact(all.saturating_mul(size).saturating_sub(kept.planes.len()));
-                kept.planes.resize(start + size, Block::NONE);
+                let all = usize::try_from(end).unwrap_or(usize::MAX).saturating_mul(size);
+                kept.planes.reserve_exact(all.saturating_sub(kept.planes.len()));
+                kept.planes.resize(start + blocks, Block::NONE);
             } else if !is_kept && at_kept.is_none() && !kept.planes.is_empty() {
                 at_kept = Some(leaps.clone());
             }
-            let mut place = start;
-            let mut differ = false;
-            for number in 0..program.classes.len() {
-                let end = place + program.classes[number].groups() * program.planes();
-                let planes = if is_kept {
-                    Planes::Kept(&kept.planes[place..end])
-                } else if keeps {
-                    Planes::Keep(&mut leaps[..], &mut kept.planes[place..end])
+            if self.together > 0 {
+                let planes = if is_kept || keeps {
+                    &mut kept.planes[start..start + blocks]
                 } else {
-                    Planes::Pass(&mut leaps[..], &mut self.batches[..])
+                    &mut self.batches[..blocks]
                 };
-                differ |= self.bounds.update(program, number, self.width, self.strips, planes);
-                place = end;
+                if !is_kept {
+                    decide_sweeps(self.words, program, &mut leaps[0], planes);
+                }
+                self.bounds.sweep(program, self.words, planes, &mut swept);
+            } else {
+                let mut place = start;
+                let mut differ = false;
+                for number in 0..program.classes.len() {
+                    let end = place + program.classes[number].groups() * program.planes();
+                    let planes = if is_kept {
+                        Planes::Kept(&kept.planes[place..end])
+                    } else if keeps {
+                        Planes::Keep(&mut leaps[..], &mut kept.planes[place..end])
+                    } else {
+                        Planes::Pass(&mut leaps[..], &mut self.batches[..])
+                    };
+                    differ |= self.bounds.update(program, number, self.words, self.strips, planes);
+                    place = end;
+                }
+                self.bounds.met |= !differ;
+                swept(1, self.bounds.met);
             }
-            self.bounds.met |= !differ;
-            swept(self.bounds.met);
+            sweep += count;
         }
         let words = leaps.iter().map(Leap::drawn).sum();
         if !kept.planes.is_empty() {
@@ -202,12 +230,29 @@ impl<'a> Sliced<'a> {
 }
 
 impl Bounds {
+    /// Makes as many sweeps as there are planes for, by a program of one strip.
+    fn sweep(&mut self, program: &Program, words: Words, mut planes: &[Block], mut swept: impl FnMut(usize, bool)) {
+        while !planes.is_empty() {
+            let work = Sweeps {
+                program,
+                planes,
+                lower: self.lower.all_mut(),
+                upper: self.upper.all_mut(),
+                met: self.met,
+            };
+            let (made, met) = sweep(words, work);
+            self.met = met;
+            swept(made, met);
+            planes = &planes[made * program.planes_of_sweep()..];
+        }
+    }
+
     /// Updates one class; says whether its bounds differ.
     fn update(
         &mut self,
         program: &Program,
         number: usize,
-        width: Width,
+        words: Words,
         strips: Strips,
         planes: Planes<'_, [Leap]>,
     ) -> bool {
@@ -221,9 +266,9 @@ impl Bounds {
             let mut differ = false;
             let mut update = |groups: Range<usize>, planes: &[Block]| {
                 let first = strip.groups.start;
-                let words = (groups.start - first) * WORDS..(groups.end - first) * WORDS;
+                let place = (groups.start - first) * WORDS..(groups.end - first) * WORDS;
                 differ |= update(
-                    width,
+                    words,
                     Update {
                         program,
                         class,
@@ -231,8 +276,8 @@ impl Bounds {
                         planes,
                         lower,
                         upper,
-                        own_lower: &mut strip.lower[words.clone()],
-                        own_upper: &mut strip.upper[words],
+                        own_lower: &mut strip.lower[place.clone()],
+                        own_upper: &mut strip.upper[place],
                     },
                 );
             };
@@ -242,7 +287,7 @@ impl Bounds {
                     for (batch, planes) in planes.chunks_mut(BATCH * size).enumerate() {
                         let first = strip.groups.start + batch * BATCH;
                         let groups = first..first + planes.len() / size;
-                        decide(width, program, class, groups.clone(), leap, planes);
+                        decide(words, program, class, groups.clone(), leap, planes);
                         update(groups, planes);
                     }
                 }
@@ -250,7 +295,7 @@ impl Bounds {
                     for first in strip.groups.clone().step_by(BATCH) {
                         let groups = first..strip.groups.end.min(first + BATCH);
                         let planes = &mut planes[..groups.len() * size];
-                        decide(width, program, class, groups.clone(), leap, planes);
+                        decide(words, program, class, groups.clone(), leap, planes);
                         update(groups, planes);
                     }
                 }
@@ -300,8 +345,8 @@ impl Engine for Sliced<'_> {
         self.bounds.met = false;
         let (mut words, mut merged_at, mut left) = (0, None, 1u64 << depth);
         for epoch in (0..=depth).rev() {
-            words += self.epoch(address, epoch, stop, |met| {
-                left -= 1;
+            words += self.epoch(address, epoch, stop, |sweeps, met| {
+                left -= sweeps as u64;
                 if met && merged_at.is_none() {
                     merged_at = Some(left);
                 }

@@ -94,6 +94,8 @@ pub struct Pattern {
     pub ends: [u32; MOST_SLOTS],
     /// Whether digits are drawn at all.
     pub draws: bool,
+    /// Digits (after a folded one) before which a group of so many lanes is hardly ever decided.
+    pub sure: usize,
     /// For each comparison the lanes that ask it.
     pub asks: Vec<Block>,
     /// For each comparison the lanes that ask its mirror (folded only).
@@ -202,6 +204,14 @@ impl Program {
         Some(program)
     }
 
+    /// Slots to count neighbours in; the rule of exclusion counts none, every other one reads the first two.
+    pub fn slots_to_count(&self) -> usize {
+        match self.rule {
+            Rule::Exclusion => 0,
+            Rule::Folded | Rule::Ranked => self.slots.max(1),
+        }
+    }
+
     /// Strips of the largest class.
     pub fn strips(&self) -> usize {
         let groups = self.classes.iter().map(Class::groups).max();
@@ -299,6 +309,7 @@ impl Program {
             terms,
             ends,
             draws: false,
+            sure: lanes.checked_ilog2().unwrap_or(0).saturating_sub(2) as usize,
             asks: vec![Block::NONE; self.comparisons.len()],
             asks_mirror: vec![Block::NONE; if self.folded { self.comparisons.len() } else { 0 }],
             answers: Vec::new(),
