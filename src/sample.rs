@@ -65,6 +65,16 @@ impl Configuration {
         &self.bytes
     }
 
+    /// The sites 64 at a time: bit i of word w is 1 for +1 (occupied) at site 64 w + i.
+    pub fn words(&self) -> impl Iterator<Item = u64> + '_ {
+        let word = |bytes: &[u8]| {
+            let mut word = [0; 8];
+            word[..bytes.len()].copy_from_slice(bytes);
+            u64::from_le_bytes(word)
+        };
+        self.bytes.chunks(8).map(word)
+    }
+
     /// Whether `site` is +1 (occupied).
     pub fn is_plus(&self, site: u32) -> bool {
         self.bytes[site as usize / 8] >> (site % 8) & 1 == 1
@@ -72,7 +82,7 @@ impl Configuration {
 
     /// How many sites are +1 (occupied).
     pub fn count_plus(&self) -> u64 {
-        self.bytes.iter().map(|byte| u64::from(byte.count_ones())).sum()
+        self.words().map(|word| u64::from(word.count_ones())).sum()
     }
 
     /// The first site at which two configurations of one lattice differ.
@@ -146,6 +156,9 @@ mod tests {
         let packed = Configuration::pack(&[true, false, false, true, false, false, false, true, true]);
         assert_eq!(packed.as_bytes(), [0b1000_1001, 1]);
         assert_eq!(packed.count_plus(), 4);
+        assert!(packed.words().eq([0b1_1000_1001]));
+        let long = Configuration::pack(&[true; 70]);
+        assert!(long.words().eq([u64::MAX, 0b11_1111]));
         assert_eq!(Configuration::from_bytes(9, &[0b1000_1001, 1]), Some(packed.clone()));
         assert_eq!(
             Configuration::from_bytes(9, &[0b1000_1001, 3]),
