@@ -15,7 +15,7 @@ use serde_json::{Value, json};
 use crate::error::Result;
 
 pub use graph::Graph;
-pub use regular::Regular;
+pub use regular::{Neighbours, Regular};
 
 /// Sites of one lattice, at most.
 pub const MOST_SITES: u64 = 1 << 26;

@@ -18,7 +18,6 @@ pub struct Regular {
 
 /// The edge that each cell has of one sort: from its first end in the cell to its second one in the cell reached by
 /// moving one way along each of some axes.
-#[derive(Clone)]
 struct Step {
     ends: [u32; 2],
     axes: Range<usize>,
@@ -128,60 +127,49 @@ impl Regular {
         self.extents.iter().product()
     }
 
+    /// How many edges a cell has.
+    fn steps(&self) -> usize {
+        if self.kind == Kind::Hypercubic {
+            self.extents.len()
+        } else {
+            3
+        }
+    }
+
     /// The edges of a cell, in their order.
-    fn steps(&self) -> impl Iterator<Item = Step> + Clone + use<> {
-        let (kind, axes) = (self.kind, self.extents.len());
-        let count = if kind == Kind::Hypercubic { axes } else { 3 };
-        (0..count).map(move |number| match (kind, number) {
-            (Kind::Hypercubic, axis) | (Kind::Triangular, axis @ 0..2) => Step {
-                ends: [0, 0],
-                axes: axis..axis + 1,
-                way: Way::Up,
-            },
-            (Kind::Triangular, _) => Step {
-                ends: [0, 0],
-                axes: 0..2,
-                way: Way::Up,
-            },
+    fn step(&self, number: usize) -> Step {
+        let (ends, axes, way) = match (self.kind, number) {
+            (Kind::Hypercubic, axis) | (Kind::Triangular, axis @ 0..2) => ([0, 0], axis..axis + 1, Way::Up),
+            (Kind::Triangular, _) => ([0, 0], 0..2, Way::Up),
             // a cell's A with its own B, with that one down axis 1, with that one down axis 0
-            (Kind::Honeycomb, _) => Step {
-                ends: [0, 1],
-                axes: [0..0, 1..2, 0..1][number].clone(),
-                way: Way::Down,
-            },
-        })
+            (Kind::Honeycomb, 0) => ([0, 1], 0..0, Way::Down),
+            (Kind::Honeycomb, number) => ([0, 1], 2 - number..3 - number, Way::Down),
+        };
+        Step { ends, axes, way }
     }
 
     /// All edges in their numbered order.
     pub(super) fn edges(&self) -> impl Iterator<Item = [u32; 2]> + '_ {
         let width = sites_of_cell(self.kind);
-        let steps = self.steps();
         (0..self.cells()).flat_map(move |cell| {
-            steps.clone().filter_map(move |step| {
+            (0..self.steps()).filter_map(move |number| {
+                let step = self.step(number);
                 let far = self.hop(cell, step.axes, step.way).ok()?;
                 Some([cell * width + step.ends[0], far * width + step.ends[1]])
             })
         })
     }
 
-    /// What `site` has at the other end of each of its edges, in the order of the steps of a cell, and what it has
+    /// What `site` has at the other end of each of its edges, in the order of the edges of a cell, and what it has
     /// instead where an edge is absent.
-    pub fn neighbours(&self, site: u32) -> impl Iterator<Item = Neighbour> + '_ {
+    pub fn neighbours(&self, site: u32) -> Neighbours<'_> {
         let width = sites_of_cell(self.kind);
-        let (cell, own) = (site / width, site % width);
-        self.steps().flat_map(move |step| {
-            // the edge that leads from here, and the one that leads here
-            let ends = [(0, 1, step.way), (1, 0, step.way.back())];
-            ends.into_iter().filter_map(move |(near, far, way)| {
-                if step.ends[near] != own {
-                    return None;
-                }
-                match self.hop(cell, step.axes.clone(), way) {
-                    Ok(cell) => Some(Neighbour::Site(cell * width + step.ends[far])),
-                    Err(word) => word.frozen().map(Neighbour::Frozen),
-                }
-            })
-        })
+        Neighbours {
+            regular: self,
+            cell: site / width,
+            own: site % width,
+            next: 0,
+        }
     }
 
     /// The cell one step away along all of `axes`; for an edge that would wrap an axis that is not periodic, the
@@ -205,6 +193,44 @@ impl Regular {
             };
         }
         word.map_or(Ok(target), Err)
+    }
+}
+
+/// The neighbours of a site of a regular lattice.
+#[derive(Clone, Debug)]
+pub struct Neighbours<'a> {
+    regular: &'a Regular,
+    cell: u32,
+    /// Which site of the cell.
+    own: u32,
+    /// Each edge of a cell leads away from a site and, that of another cell, to it.
+    next: usize,
+}
+
+impl Iterator for Neighbours<'_> {
+    type Item = Neighbour;
+
+    fn next(&mut self) -> Option<Neighbour> {
+        while self.next < 2 * self.regular.steps() {
+            let (step, near) = (self.regular.step(self.next / 2), self.next % 2);
+            self.next += 1;
+            if step.ends[near] != self.own {
+                continue;
+            }
+            let way = if near == 0 { step.way } else { step.way.back() };
+            match self.regular.hop(self.cell, step.axes, way) {
+                Ok(cell) => {
+                    let site = cell * sites_of_cell(self.regular.kind) + step.ends[1 - near];
+                    return Some(Neighbour::Site(site));
+                }
+                Err(word) => {
+                    if let Some(spin) = word.frozen() {
+                        return Some(Neighbour::Frozen(spin));
+                    }
+                }
+            }
+        }
+        None
     }
 }
 

@@ -1,8 +1,9 @@
 //! Who is at the far end of each edge of a site: from coordinates on a regular lattice, from a list on a graph.
 
+use std::ops::Range;
 use std::sync::Arc;
 
-use crate::lattice::{Graph, Lattice, Neighbour, Regular};
+use crate::lattice::{Graph, Lattice, Neighbour, Neighbours, Regular};
 
 use super::labels::Labels;
 
@@ -53,15 +54,38 @@ impl Adjacency {
     }
 
     /// The far ends of the edges of `site`, frozen ones included, each with the number of its coupling.
-    pub(super) fn neighbours(&self, site: u32) -> impl Iterator<Item = (Neighbour, u32)> + '_ {
-        let (regular, listed) = match self {
-            Self::Regular(regular) => (Some(regular.neighbours(site).map(|far| (far, 0))), None),
-            Self::Listed { first, far, coupling } => {
-                let ends = first[site as usize] as usize..first[site as usize + 1] as usize;
-                let listed = ends.map(|at| (Neighbour::Site(far[at]), coupling.get(at)));
-                (None, Some(listed))
+    pub(super) fn neighbours(&self, site: u32) -> FarEnds<'_> {
+        match self {
+            Self::Regular(regular) => FarEnds::Regular(regular.neighbours(site)),
+            Self::Listed { first, far, coupling } => FarEnds::Listed {
+                ends: first[site as usize] as usize..first[site as usize + 1] as usize,
+                far,
+                coupling,
+            },
+        }
+    }
+}
+
+/// The far ends of the edges of one site.
+pub(super) enum FarEnds<'a> {
+    Regular(Neighbours<'a>),
+    Listed {
+        ends: Range<usize>,
+        far: &'a [u32],
+        coupling: &'a Labels,
+    },
+}
+
+impl Iterator for FarEnds<'_> {
+    type Item = (Neighbour, u32);
+
+    fn next(&mut self) -> Option<(Neighbour, u32)> {
+        match self {
+            Self::Regular(neighbours) => Some((neighbours.next()?, 0)),
+            Self::Listed { ends, far, coupling } => {
+                let at = ends.next()?;
+                Some((Neighbour::Site(far[at]), coupling.get(at)))
             }
-        };
-        regular.into_iter().flatten().chain(listed.into_iter().flatten())
+        }
     }
 }

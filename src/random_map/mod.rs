@@ -165,23 +165,20 @@ impl RandomMap {
 
     /// The far ends of the edges of `site` that move; none for a held site.
     pub fn ends(&self, site: u32) -> impl Iterator<Item = End> + '_ {
-        let moves = self.held_at.get(site).is_none();
-        let profile = moves.then(|| self.profile_at(site));
-        profile.into_iter().flat_map(move |profile| {
-            self.adjacency
-                .neighbours(site)
-                .filter_map(|(neighbour, coupling)| match neighbour {
-                    Neighbour::Site(far) if self.held_at.get(far).is_none() => {
-                        let at = profile.pulls.binary_search_by_key(&coupling, |pull| pull.coupling);
-                        let pull = profile.pulls[at.ok()?];
-                        Some(End {
-                            site: far,
-                            weight: pull.weight,
-                            rising: pull.rising,
-                        })
-                    }
-                    _ => None,
+        let moves = |site| self.held_at.get(site).is_none();
+        let profile = moves(site).then(|| self.profile_at(site));
+        let neighbours = self.adjacency.neighbours(site);
+        neighbours.filter_map(move |(neighbour, coupling)| match neighbour {
+            Neighbour::Site(far) if moves(far) => {
+                let pulls = &profile?.pulls;
+                let at = pulls.binary_search_by_key(&coupling, |pull| pull.coupling).ok()?;
+                Some(End {
+                    site: far,
+                    weight: pulls[at].weight,
+                    rising: pulls[at].rising,
                 })
+            }
+            _ => None,
         })
     }
 

@@ -32,7 +32,10 @@ const MAY_IMPORT: &[(&str, &[&str])] = &[
         "plan",
         &["quantity", "error", "canonical", "number", "lattice", "law", "sample"],
     ),
-    ("engine", &["error", "law", "threshold", "random_map", "sample", "stream"]),
+    (
+        "engine",
+        &["error", "law", "threshold", "random_map", "sample", "stream"],
+    ),
     ("observable", &["number", "lattice", "law", "sample"]),
     ("exact", &["error", "number", "lattice", "law"]),
     // 3 record: bytes on disk; knows no engine
