@@ -22,9 +22,6 @@ use crate::sample::{Configuration, Outcome, Sample};
 use crate::stream::Address;
 use crate::tree;
 
-/// Samples replayed before the next rows are read.
-const BLOCK: usize = 256;
-
 /// Which samples to draw again.
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
 pub enum Which {
@@ -147,9 +144,10 @@ pub fn replay(
                 let planned = checked.record.samples;
                 observer.begin(&format!("ensemble {ensemble}"), planned);
                 let mut rows = run.rows(*ensemble, columns)?;
+                let block = crew.at_once(redraw.pool.current_num_threads());
                 let mut seen = 0;
                 loop {
-                    let block = rows.by_ref().take(BLOCK).collect::<Result<Vec<_>>>()?;
+                    let block = rows.by_ref().take(block).collect::<Result<Vec<_>>>()?;
                     if block.is_empty() {
                         break;
                     }

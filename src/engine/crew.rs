@@ -15,6 +15,7 @@ use crate::engine::sliced::{Sliced, Strips};
 use crate::engine::word::{Width, Words};
 use crate::error::{Error, Result};
 use crate::random_map::RandomMap;
+use crate::sample::bytes_per_sample;
 
 /// Which engine is wanted.
 #[derive(Clone, Copy, PartialEq, Eq, Debug, Default)]
@@ -88,6 +89,12 @@ enum Sharing {
 /// Strips of one class, for each thread at least, that make it worthwhile to share one sample.
 const STRIPS_A_THREAD: usize = 2;
 
+/// Samples worked on before the next ones are begun: so many, or so many bytes of them, whichever is less, but some
+/// for each thread.
+const MOST_AT_ONCE: usize = 1024;
+const LARGE_BLOCK: usize = 8 << 20;
+const SAMPLES_A_THREAD: usize = 2;
+
 impl<'a> Crew<'a> {
     /// A crew for `map`.
     pub fn new(map: &'a RandomMap, settings: &Settings) -> Self {
@@ -120,6 +127,14 @@ impl<'a> Crew<'a> {
             Compiled::Plain => Box::new(Plain::new(self.map)),
             Compiled::Sliced(program, words) => Box::new(Sliced::new(self.map, program, *words, strips, memory)),
         }
+    }
+
+    /// How many samples to hand to [`Crew::each`] at a time: enough that threads seldom wait for the last ones, and
+    /// not more in memory than that takes.
+    pub fn at_once(&self, threads: usize) -> usize {
+        let large = LARGE_BLOCK / bytes_per_sample(self.map.sites());
+        let enough = SAMPLES_A_THREAD * threads;
+        large.min(MOST_AT_ONCE).max(enough).next_multiple_of(threads)
     }
 
     /// Does `work` for each of `items` on the threads of the pool that this is called in: side by
@@ -183,5 +198,33 @@ impl fmt::Display for Crew<'_> {
             Compiled::Plain => write!(f, "plain engine"),
             Compiled::Sliced(_, words) => write!(f, "bit-sliced engine, {}", words.width()),
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::lattice::{Boundary, Kind, Lattice, Regular};
+    use crate::law::{Law, Model};
+    use crate::number::Exact;
+
+    /// By hand: 32 bytes a sample, 2 MiB a sample, and more threads than fit.
+    #[test]
+    fn few_large_samples_are_in_memory_at_once() {
+        let map = |extent| {
+            let square = Regular::new(Kind::Hypercubic, vec![extent; 2], vec![Boundary::Periodic; 2]).unwrap();
+            let model = Model::LatticeGas { activity: Exact::one() };
+            RandomMap::new(&Law::new(model, Lattice::Regular(square), None).unwrap()).unwrap()
+        };
+        let at_once = |map: &RandomMap, threads| {
+            let plain = Settings {
+                engine: Choice::Plain,
+                ..Settings::default()
+            };
+            Crew::new(map, &plain).at_once(threads)
+        };
+        let (small, large) = (map(16), map(4096));
+        assert_eq!([1, 2, 3].map(|threads| at_once(&small, threads)), [1024, 1024, 1026]);
+        assert_eq!([1, 2, 3, 64].map(|threads| at_once(&large, threads)), [4, 4, 6, 128]);
     }
 }

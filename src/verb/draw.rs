@@ -35,10 +35,6 @@ use crate::stream;
 use crate::stream::Address;
 use crate::tree::{self, Tree};
 
-/// Samples drawn before the next ones are begun, at most, and their bytes.
-const BLOCK_SAMPLES: u64 = 1024;
-const BLOCK_BYTES: u64 = 64 << 20;
-
 /// What a run asks of the world around it.
 pub trait Clock: Sync {
     /// The time now, RFC 3339, UTC.
@@ -231,10 +227,7 @@ impl Work<'_> {
         let columns = Columns::new(observables.names())?;
         let key = law.key()?;
         let planned = self.ensemble.samples();
-        let sample_bytes = bytes_per_sample(law.lattice().sites()) as u64;
-        let block = BLOCK_SAMPLES
-            .min(BLOCK_BYTES / sample_bytes)
-            .max(rayon::current_num_threads() as u64);
+        let block = crew.at_once(rayon::current_num_threads());
 
         let map_range = texts.append(&canonical::to_bytes(&wire::Map::of(law, &map))?)?;
         let table_start = texts.append(columns.first_line().as_bytes())?.start;
@@ -247,8 +240,8 @@ impl Work<'_> {
             time: Duration::ZERO,
         };
         let mut rows = 0;
-        for first in (0..planned).step_by(usize::try_from(block).unwrap_or(usize::MAX)) {
-            let indices = first..planned.min(first + block);
+        for first in (0..planned).step_by(block) {
+            let indices = first..planned.min(first + block as u64);
             let draw_one = |engine: &mut dyn Engine, index: &u64| {
                 let address = Address {
                     seed: self.seed,
