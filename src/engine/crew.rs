@@ -100,7 +100,7 @@ impl<'a> Crew<'a> {
     pub fn new(map: &'a RandomMap, settings: &Settings) -> Self {
         let compiled = match settings.engine {
             Choice::Plain => Compiled::Plain,
-            Choice::Automatic => match Program::new(map) {
+            Choice::Automatic => match Program::if_fast(map) {
                 Some(program) => Compiled::Sliced(
                     Box::new(program),
                     settings.width.and_then(Width::words).unwrap_or_else(Width::widest),

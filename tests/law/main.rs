@@ -1,5 +1,6 @@
 //! What the samples are: known answers, exactness against enumeration and published values.
 
+mod agreement;
 mod exactness;
 mod faults;
 mod properties;

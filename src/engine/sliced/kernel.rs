@@ -166,10 +166,10 @@ impl<L: Lanes, const C: usize> Race<L, C> {
     fn digit(&mut self, program: &Program, place: usize, word: L) {
         let opposite = word.xor(self.turn);
         let bits = &program.digits[place];
-        for at in 0..C {
+        for ((equal, below), bit) in self.equal.iter_mut().zip(&mut self.below).zip(bits) {
             // at the first digit that differs, U is below theta exactly if its digit is 0
-            self.below[at] = self.equal[at].select(opposite, self.below[at]);
-            self.equal[at] = self.equal[at].and_xor(opposite, L::splat(bits[at]));
+            *below = equal.select(opposite, *below);
+            *equal = equal.and_xor(opposite, L::splat(*bit));
         }
         if program.endings[place + 1] {
             self.end(program, place + 1);

@@ -5,8 +5,7 @@
 //! distance from the lane's own place, and few distances occur in a group: each is one *term*, a
 //! shifted window of the state under a mask. The terms of a group are sorted into *slots* so that a
 //! lane has at most one neighbour in each slot; equal groups share one [`Pattern`]. Nothing here is
-//! about a certain lattice: a map whose groups need too many terms is refused, and left to the
-//! compact engine.
+//! about a certain lattice: a map whose groups need too many terms is left to the compact engine.
 
 use std::collections::BTreeMap;
 
@@ -22,8 +21,12 @@ use crate::threshold::Threshold;
 pub const MOST_SLOTS: usize = 8;
 /// Thresholds that are compared digit by digit, at most.
 pub const MOST_COMPARISONS: usize = 17;
-/// Distinct distances in a group, at most: beyond, a lane at a time is as fast.
-const MOST_TERMS: usize = 96;
+/// What a group costs beside its terms, and what a lane costs the compact engine, in terms: beyond, a
+/// lane at a time is faster.
+const TERMS_A_GROUP: usize = 32;
+const TERMS_A_LANE: f64 = 0.5;
+/// Groups whose patterns are found at a time, so that memory stays small and a bad case ends soon.
+const GROUPS_AT_ONCE: usize = 64;
 /// Patterns of one map together, at most: they must not outgrow the states.
 const MOST_PATTERN_BYTES: usize = 1 << 26;
 /// Neighbours for which the folded rule is compiled.
@@ -151,8 +154,18 @@ pub struct Program {
 type Ranks = Vec<Threshold>;
 
 impl Program {
-    /// The program of `map`, if it can be sliced well.
+    /// The program of `map`, if it has sliced digits, not more neighbours and thresholds than are
+    /// compiled for, and not too many different groups.
     pub fn new(map: &RandomMap) -> Option<Self> {
+        Self::compile(map, f64::INFINITY)
+    }
+
+    /// The program of `map`, if it is faster than a lane at a time.
+    pub fn if_fast(map: &RandomMap) -> Option<Self> {
+        Self::compile(map, TERMS_A_LANE)
+    }
+
+    fn compile(map: &RandomMap, terms_a_lane: f64) -> Option<Self> {
         if map.digits() != Digits::Sliced {
             return None;
         }
@@ -200,7 +213,7 @@ impl Program {
             patterns: Vec::new(),
             words,
         };
-        program.find_patterns(map, &ranks)?;
+        program.find_patterns(map, &ranks, terms_a_lane)?;
         Some(program)
     }
 
@@ -232,29 +245,32 @@ impl Program {
         self.planes() * self.classes.iter().map(Class::groups).sum::<usize>()
     }
 
-    fn find_patterns(&mut self, map: &RandomMap, ranks: &[Ranks]) -> Option<()> {
+    fn find_patterns(&mut self, map: &RandomMap, ranks: &[Ranks], terms_a_lane: f64) -> Option<()> {
         let mut known = BTreeMap::new();
-        let mut bytes = 0;
+        let (mut bytes, mut terms, mut lanes, mut groups_seen) = (0, 0, 0, 0);
         for number in 0..self.classes.len() {
             let groups = self.classes[number].groups();
-            // a few groups at a time, so that memory stays small
-            for first in (0..groups).step_by(256) {
-                let found: Vec<Option<Pattern>> = (first..groups.min(first + 256))
+            for first in (0..groups).step_by(GROUPS_AT_ONCE) {
+                let found: Vec<Option<Pattern>> = (first..groups.min(first + GROUPS_AT_ONCE))
                     .into_par_iter()
                     .map(|group| self.pattern(map, ranks, number, group))
                     .collect();
                 for (group, pattern) in (first..).zip(found) {
                     let pattern = pattern?;
+                    lanes += pattern.lanes;
+                    terms += pattern.terms.len();
+                    groups_seen += 1;
                     let next = self.patterns.len();
                     let place = *known.entry(pattern).or_insert_with_key(|pattern| {
-                        bytes += std::mem::size_of::<Pattern>() + std::mem::size_of::<Term>() * pattern.terms.len();
+                        bytes += size_of::<Pattern>() + size_of::<Term>() * pattern.terms.len();
                         self.patterns.push(pattern.clone());
                         next
                     });
                     self.classes[number].patterns[group] = u32::try_from(place).ok()?;
-                    if bytes > MOST_PATTERN_BYTES {
-                        return None;
-                    }
+                }
+                let most = terms_a_lane * lanes as f64 + (TERMS_A_GROUP * groups_seen) as f64;
+                if bytes > MOST_PATTERN_BYTES || terms as f64 > most {
+                    return None;
                 }
             }
         }
@@ -266,36 +282,37 @@ impl Program {
         let first = group * GROUP;
         let class = &map.classes()[number];
         let sites = class.sites_from(u32::try_from(first).ok()?).take(GROUP);
-        // neighbours by class, distance, and how often that place was met before at this lane
-        let mut places: Vec<(Place, Block)> = Vec::new();
+        let mut places = Places::default();
         let mut profiles: Vec<(u32, Block)> = Vec::new();
         let mut lanes = 0;
         for (lane, site) in sites.enumerate() {
             lanes = lane + 1;
-            insert(&mut profiles, map.profile(site), lane);
+            let profile = map.profile(site);
+            let at = profiles
+                .iter()
+                .position(|(known, _)| *known == profile)
+                .unwrap_or_else(|| {
+                    profiles.push((profile, Block::NONE));
+                    profiles.len() - 1
+                });
+            profiles[at].1.0[lane / 64] |= 1 << (lane % 64);
             let mut own: [Option<Place>; MOST_SLOTS] = [None; MOST_SLOTS];
             for (edge, end) in map.ends(site).enumerate() {
                 let mut classes = map.classes().iter().enumerate();
-                let (far, place) = classes.find_map(|(far, class)| Some((far, class.lane(end.site)?)))?;
-                let distance = i64::from(place) - (first + lane) as i64;
-                let mut place = Place {
-                    class: far,
+                let (class, far) = classes.find_map(|(far, class)| Some((far, class.lane(end.site)?)))?;
+                let distance = i64::from(far) - (first + lane) as i64;
+                let before = own[..edge].iter().flatten();
+                let before = before.filter(|other| (other.class, other.distance) == (class, distance));
+                let place = Place {
+                    class,
                     distance,
-                    before: 0,
+                    before: before.count(),
                 };
-                place.before = own[..edge]
-                    .iter()
-                    .flatten()
-                    .filter(|other| other.class == far && other.distance == distance)
-                    .count();
                 own[edge] = Some(place);
-                insert(&mut places, place, lane);
-                if places.len() > MOST_TERMS {
-                    return None;
-                }
+                places.insert(place, edge, lane);
             }
         }
-        let slots = into_slots(places, self.slots);
+        let slots = into_slots(places.list, self.slots);
         let mut ends = [0; MOST_SLOTS];
         let mut terms = Vec::new();
         for (slot, end) in ends.iter_mut().enumerate() {
@@ -384,12 +401,36 @@ impl Program {
     }
 }
 
-/// Where a neighbour stands.
+/// Where a neighbour stands: its class, its lane less the lane's own, and how many others of the same
+/// lane stand there too.
 #[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Debug)]
 struct Place {
     class: usize,
     distance: i64,
     before: usize,
+}
+
+/// The places of a group's neighbours, with the lanes that have one there.
+#[derive(Default)]
+struct Places {
+    list: Vec<(Place, Block)>,
+    known: BTreeMap<Place, usize>,
+    /// Where each edge of the lane before was found: mostly the next lane's is there too.
+    last: [usize; MOST_SLOTS],
+}
+
+impl Places {
+    fn insert(&mut self, place: Place, edge: usize, lane: usize) {
+        let at = match self.list.get(self.last[edge]) {
+            Some((known, _)) if *known == place => self.last[edge],
+            _ => *self.known.entry(place).or_insert_with(|| {
+                self.list.push((place, Block::NONE));
+                self.list.len() - 1
+            }),
+        };
+        self.last[edge] = at;
+        self.list[at].1.0[lane / 64] |= 1 << (lane % 64);
+    }
 }
 
 const HALF: u128 = 1 << 127;
@@ -398,14 +439,6 @@ fn join(block: &mut Block, other: &Block) {
     for (word, other) in block.0.iter_mut().zip(other.0) {
         *word |= other;
     }
-}
-
-fn insert<K: PartialEq>(list: &mut Vec<(K, Block)>, key: K, lane: usize) {
-    let at = list.iter().position(|(known, _)| *known == key).unwrap_or_else(|| {
-        list.push((key, Block::NONE));
-        list.len() - 1
-    });
-    list[at].1.0[lane / 64] |= 1 << (lane % 64);
 }
 
 /// Sorts places into slots in which no lane stands twice: large ones whole, what fits nowhere in parts.
