@@ -9,6 +9,8 @@ pub trait Observer: Sync {
     fn begin(&self, part: &str, pieces: u64);
     /// So many more pieces are done.
     fn advance(&self, pieces: u64);
+    /// How the part is worked on, for whoever wants to know.
+    fn note(&self, _manner: &str) {}
 }
 
 /// Listens to nothing.

@@ -132,6 +132,12 @@ pub fn replay(
         thresholds += checked.map.thresholds().len();
         let columns = &checked.columns;
         let crew = Crew::new(&checked.map, settings);
+        let asked = match which {
+            Which::One(..) => 1,
+            Which::All => checked.record.samples,
+        };
+        let manner = crew.manner(asked, redraw.pool.current_num_threads());
+        observer.note(&format!("ensemble {ensemble}: {manner}"));
         match which {
             Which::One(_, sample) => {
                 let row = run.row(*ensemble, sample, columns)?;

@@ -95,6 +95,9 @@ pub struct Work {
     /// Memory for kept maps, as in 512MiB or 4GiB
     #[arg(long, value_name = "SIZE", value_parser = size, default_value = "1GiB")]
     pub memory: u64,
+    /// Say which engine works, and how threads share the work
+    #[arg(long)]
+    pub verbose: bool,
 }
 
 impl Work {

@@ -107,7 +107,7 @@ pub fn draw(request: &args::Draw, terminal: &Terminal, stop: &Stop) -> Result<Ex
     };
     let total = plan.ensembles().iter().map(|ensemble| ensemble.samples()).sum();
     let sealed = {
-        let progress = Shown(terminal.progress(total));
+        let progress = Shown::new(terminal, total, request.work.verbose);
         draw::draw(&drawing, &Watch(Instant::now()), &progress, stop)?
     };
     let answer = Answer::new(
@@ -127,15 +127,35 @@ pub fn draw(request: &args::Draw, terminal: &Terminal, stop: &Stop) -> Result<Ex
 }
 
 /// Progress of any task that counts samples.
-pub struct Shown<'a>(pub Progress<'a>);
+pub struct Shown<'a> {
+    progress: Progress<'a>,
+    /// Where it is said how parts are worked on, if that is wanted.
+    notes: Option<&'a Terminal>,
+}
+
+impl<'a> Shown<'a> {
+    /// Progress over `total` pieces on `terminal`.
+    pub fn new(terminal: &'a Terminal, total: u64, verbose: bool) -> Self {
+        Self {
+            progress: terminal.progress(total),
+            notes: verbose.then_some(terminal),
+        }
+    }
+}
 
 impl Observer for Shown<'_> {
     fn begin(&self, part: &str, _pieces: u64) {
-        self.0.ensemble(part);
+        self.progress.ensemble(part);
     }
 
     fn advance(&self, pieces: u64) {
-        self.0.advance(pieces);
+        self.progress.advance(pieces);
+    }
+
+    fn note(&self, manner: &str) {
+        if let Some(terminal) = self.notes {
+            terminal.note(Tone::Plain, manner);
+        }
     }
 }
 

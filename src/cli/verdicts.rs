@@ -161,7 +161,7 @@ pub fn replay(request: &args::Replay, terminal: &Terminal, stop: &Stop) -> Resul
         replay::Which::All => run.record().ensembles.iter().map(|ensemble| ensemble.samples).sum(),
     };
     let report = {
-        let progress = Shown(terminal.progress(total));
+        let progress = Shown::new(terminal, total, request.work.verbose);
         replay::replay(&run, which, proof, &request.work.settings(), &progress, stop)?
     };
     let sample = report
@@ -250,7 +250,7 @@ pub fn audit(request: &args::Audit, terminal: &Terminal) -> Result<Exit> {
         .map(|ensemble| ensemble.samples)
         .sum();
     let report = {
-        let progress = Shown(terminal.progress(total));
+        let progress = Shown::new(terminal, total, false);
         seal::audit(
             &request.archive,
             Anchors {

@@ -137,6 +137,26 @@ impl<'a> Crew<'a> {
         large.min(MOST_AT_ONCE).max(enough).next_multiple_of(threads)
     }
 
+    /// How so many samples are worked on by so many threads, in words.
+    pub fn manner(&self, samples: u64, threads: usize) -> String {
+        let side_by_side = match self.sharing_of_rest(threads) {
+            Sharing::Samples => samples,
+            Sharing::Strips => samples - samples % threads as u64,
+        };
+        let mut manner = self.to_string();
+        if let Compiled::Sliced(..) = self.compiled {
+            manner += &format!("; up to {} MiB for kept maps", self.memory >> 20);
+        }
+        if side_by_side > 0 {
+            manner += &format!("; {} side by side", plural(side_by_side.min(threads as u64), "sample"));
+        }
+        if samples > side_by_side {
+            let rest = plural(samples - side_by_side, "sample");
+            manner += &format!("; {rest} by strips on {}", plural(threads as u64, "thread"));
+        }
+        manner
+    }
+
     /// Does `work` for each of `items` on the threads of the pool that this is called in: side by
     /// side, and where fewer are left than threads and one sample is large, each on all threads.
     /// The results stand in the order of the items.
@@ -190,6 +210,10 @@ impl<'a> Crew<'a> {
             _ => Sharing::Samples,
         }
     }
+}
+
+fn plural(count: u64, what: &str) -> String {
+    format!("{count} {what}{}", if count == 1 { "" } else { "s" })
 }
 
 impl fmt::Display for Crew<'_> {

@@ -131,6 +131,16 @@ impl Leap {
         }
     }
 
+    /// These words, and no others.
+    #[cfg(test)]
+    pub fn holding(words: &[u64]) -> Self {
+        let mut leap = Self::new([0, 0], 1);
+        leap.words.0[LEFT..LEFT + words.len()].copy_from_slice(words);
+        leap.end = LEFT + words.len();
+        leap.made = words.len() as u64;
+        leap
+    }
+
     /// How many words were handed out.
     pub fn drawn(&self) -> u64 {
         self.made - (self.end - self.at) as u64

@@ -10,6 +10,8 @@ pub mod crew;
 pub mod leap;
 pub mod plain;
 pub mod sliced;
+#[cfg(test)]
+mod tests;
 pub mod word;
 
 use std::sync::Arc;

@@ -28,7 +28,7 @@ use crate::law::Law;
 use crate::observable::Observables;
 use crate::observer::Observer;
 use crate::plan::{Ensemble, Plan, STOPPING};
-use crate::quantity::{Digest, SampleIndex, Seed};
+use crate::quantity::{Digest, EnsembleIndex, SampleIndex, Seed};
 use crate::random_map::RandomMap;
 use crate::sample::bytes_per_sample;
 use crate::stream;
@@ -132,6 +132,7 @@ pub fn draw(request: &Request<'_>, clock: &dyn Clock, observer: &dyn Observer, s
         let work = Work {
             seed: request.seed,
             first_depth,
+            number,
             ensemble,
             settings: &request.settings,
             observer,
@@ -212,6 +213,7 @@ struct Drawn {
 struct Work<'a> {
     seed: Seed,
     first_depth: u8,
+    number: EnsembleIndex,
     ensemble: &'a Ensemble,
     settings: &'a Settings,
     observer: &'a dyn Observer,
@@ -227,6 +229,8 @@ impl Work<'_> {
         let columns = Columns::new(observables.names())?;
         let key = law.key()?;
         let planned = self.ensemble.samples();
+        let manner = crew.manner(planned, rayon::current_num_threads());
+        self.observer.note(&format!("ensemble {}: {manner}", self.number));
         let block = crew.at_once(rayon::current_num_threads());
 
         let map_range = texts.append(&canonical::to_bytes(&wire::Map::of(law, &map))?)?;
