@@ -4,5 +4,6 @@ mod bench;
 mod exits;
 mod interrupt;
 mod json;
+mod memory;
 mod readme;
 mod verbs;
