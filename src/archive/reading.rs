@@ -175,20 +175,35 @@ impl Run {
     /// Those of [`Law::from_json`], with file, member and ensemble.
     pub fn law(&self, ensemble: EnsembleIndex) -> Result<Law> {
         let value = &self.ensemble(ensemble)?.law;
-        let graph = self.part(layout::in_ensemble(ensemble, layout::GRAPH), |json| {
+        let names_graph = value["lattice"]["kind"] == "graph";
+        let graph = self.part(layout::in_ensemble(ensemble, layout::GRAPH), names_graph, |json| {
             let sites = value["lattice"]["sites"].as_u64();
             let sites = sites.ok_or_else(|| Error::conflict("a graph stands beside a law that names none"))?;
             Graph::from_json(json, sites)
         })?;
-        let held = self.part(layout::in_ensemble(ensemble, layout::HELD), Held::from_json)?;
+        let names_held = !value["held"].is_null();
+        let held = self.part(layout::in_ensemble(ensemble, layout::HELD), names_held, Held::from_json)?;
         self.at(
             layout::RECORD,
             Law::from_json(value, graph, held).map_err(|error| error.at_ensemble(ensemble)),
         )
     }
 
-    fn part<T>(&self, member: String, parse: impl Fn(&serde_json::Value) -> Result<T>) -> Result<Option<Arc<T>>> {
-        if self.size(&member)?.is_none() {
+    /// A part of a law. What the law does not name is no part of it: then the file is not read to its end to show
+    /// that there is none, but a member that is listed is handed on all the same.
+    fn part<T>(
+        &self,
+        member: String,
+        is_named: bool,
+        parse: impl Fn(&serde_json::Value) -> Result<T>,
+    ) -> Result<Option<Arc<T>>> {
+        let is_there = if is_named {
+            self.size(&member)?.is_some()
+        } else {
+            let listed = self.archive.borrow_mut().lists(&member);
+            listed.map_err(|error| error.in_file(&self.path))?
+        };
+        if !is_there {
             return Ok(None);
         }
         let text = self.text(&member)?;

@@ -3,7 +3,9 @@
 //! Apart from the [reader](super::reader) because here nothing is decided: a directory that is not
 //! true is an error, and what follows from that is the reader's business.
 
+use std::collections::VecDeque;
 use std::io::{Read, Seek};
+use std::ops::Range;
 
 use crate::error::{Error, Result};
 
@@ -13,6 +15,10 @@ use super::index::Directory;
 
 /// What is allocated before the bytes for it have arrived.
 const FIRST_ALLOCATION: u64 = 1 << 20;
+
+/// The longest frame that is kept, and how many are: a path through the tree of millions of samples touches about ten.
+const LARGEST_KEPT: u64 = 2 << 20;
+const MOST_KEPT: usize = 12;
 
 /// Reading by a directory, which need not be true: every frame must begin and end where it says.
 pub(super) struct Access<'a, R> {
@@ -39,7 +45,7 @@ impl<'a, R: Read + Seek> Access<'a, R> {
         let mut at = offset;
         let mut left = length;
         while left > 0 {
-            let number = self.frame_of(at)?;
+            let number = self.directory.frame_of(at)?;
             if self.current != Some(number) {
                 self.close()?;
                 self.enter(number)?;
@@ -71,7 +77,7 @@ impl<'a, R: Read + Seek> Access<'a, R> {
                 count => self.frames.advance(count),
             }
         }
-        if self.frames.position() != self.end_of(number) {
+        if self.frames.position() != self.directory.end_of(number) {
             return Err(Error::damaged("a zstd frame ends elsewhere than the index says")
                 .at_offset(self.frames.position().uncompressed));
         }
@@ -101,29 +107,62 @@ impl<'a, R: Read + Seek> Access<'a, R> {
     fn checked_chunk(&mut self) -> Result<usize> {
         let count = self.frames.chunk()?.len();
         let here = self.frames.position().uncompressed;
-        let end = self.current.map_or(here, |number| self.end_of(number).uncompressed);
+        let end = self
+            .current
+            .map_or(here, |number| self.directory.end_of(number).uncompressed);
         if count as u64 > end.saturating_sub(here) {
             return Err(Error::damaged("a zstd frame is longer than the index says").at_offset(here));
         }
         Ok(count)
     }
+}
 
+impl Directory {
     /// The last frame that begins at or before `offset`; of frames without content the one behind them.
     fn frame_of(&self, offset: u64) -> Result<usize> {
-        if offset >= self.directory.end.uncompressed {
+        if offset >= self.end.uncompressed {
             return Err(Error::damaged("an offset behind the end of the tar").at_offset(offset));
         }
-        let behind = self
-            .directory
-            .frames
-            .partition_point(|frame| frame.uncompressed <= offset);
+        let behind = self.frames.partition_point(|frame| frame.uncompressed <= offset);
         behind
             .checked_sub(1)
             .ok_or_else(|| Error::damaged("an offset before the first frame").at_offset(offset))
     }
 
     fn end_of(&self, number: usize) -> FrameStart {
-        *self.directory.frames.get(number + 1).unwrap_or(&self.directory.end)
+        *self.frames.get(number + 1).unwrap_or(&self.end)
+    }
+
+    /// The frame that holds all of a range of the tar, with its own range, if there is one and it is small enough
+    /// to be [`Kept`].
+    pub(super) fn small_frame_around(&self, range: &Range<u64>) -> Option<(usize, Range<u64>)> {
+        let number = self.frame_of(range.start).ok()?;
+        let frame = self.frames[number].uncompressed..self.end_of(number).uncompressed;
+        let inside = !range.is_empty() && range.end <= frame.end;
+        (inside && frame.end - frame.start <= LARGEST_KEPT).then_some((number, frame))
+    }
+}
+
+/// The content of the small frames that were decoded last: whoever looks for one sample, or goes through all of
+/// them in order, reads many small pieces of few frames.
+#[derive(Default)]
+pub(super) struct Kept(VecDeque<(usize, Vec<u8>)>);
+
+impl Kept {
+    /// The content of a frame that is kept.
+    pub(super) fn get(&mut self, number: usize) -> Option<&[u8]> {
+        let at = self.0.iter().position(|(kept, _)| *kept == number)?;
+        let frame = self.0.remove(at)?;
+        self.0.push_back(frame);
+        self.0.back().map(|(_, content)| content.as_slice())
+    }
+
+    /// Keeps a frame, instead of the one that was not asked for longest.
+    pub(super) fn put(&mut self, number: usize, content: Vec<u8>) {
+        if self.0.len() == MOST_KEPT {
+            self.0.pop_front();
+        }
+        self.0.push_back((number, content));
     }
 }
 

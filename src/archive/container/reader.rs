@@ -8,7 +8,7 @@ use std::path::{Path, PathBuf};
 
 use crate::error::{Error, ErrorKind, Result};
 
-use super::access::Access;
+use super::access::{Access, Kept};
 use super::frames::{Border, FrameStart, Frames, SKIPPABLE_HEADER};
 use super::index::{self, Directory, TAIL};
 use super::member::{BLOCK, Member, Names, padding, parse_header};
@@ -32,6 +32,7 @@ struct View {
     origin: Origin,
     /// For each member, whether its header was compared.
     compared: Vec<bool>,
+    kept: Kept,
 }
 
 #[derive(Clone, Copy, PartialEq, Eq)]
@@ -46,6 +47,7 @@ impl View {
         Self {
             by_name: names.zip(0..).collect(),
             compared: vec![false; directory.members.len()],
+            kept: Kept::default(),
             directory,
             origin,
         }
@@ -117,6 +119,15 @@ impl<R: Read + Seek> Archive<R> {
         };
         self.in_file(passed)?;
         Ok(self.view.as_ref().map_or(&[], |view| &view.directory.members))
+    }
+
+    /// Whether a member of this name is listed: as in [`Archive::members`] no proof before a walk, but at no cost.
+    ///
+    /// # Errors
+    /// Those of [`Archive::walk`], if there is no index.
+    pub fn lists(&mut self, name: &str) -> Result<bool> {
+        self.members()?;
+        Ok(self.view.as_ref().is_some_and(|view| view.by_name.contains_key(name)))
     }
 
     /// The member of this name, with its header compared; `None` if a pass over the whole file finds none.
@@ -262,20 +273,42 @@ impl<R: Read + Seek> Archive<R> {
     }
 
     fn extract(&mut self, member: &Member, range: &Range<u64>) -> Result<Vec<u8>> {
-        let Some(view) = &self.view else {
-            return Err(Error::damaged("no directory"));
-        };
-        let mut access = Access::new(&mut self.source, &view.directory, &self.limits)?;
-        let read = access
-            .read(member.content_offset() + range.start, range.end - range.start)
-            .and_then(|bytes| access.close().map(|()| bytes));
-        self.frames_decoded += access.opened();
-        let mut bytes = read?;
+        let content = member.content_offset();
+        let mut bytes = self.cut(content + range.start..content + range.end)?;
         if range.end > member.size {
             let padding = bytes.split_off((member.size - range.start) as usize);
-            zeros(&padding, "padding").map_err(|error| error.at_offset(member.content_offset() + member.size))?;
+            zeros(&padding, "padding").map_err(|error| error.at_offset(content + member.size))?;
         }
         Ok(bytes)
+    }
+
+    /// Bytes of the tar. What lies in one small frame is cut out of it, and the frame kept for what is asked next.
+    fn cut(&mut self, range: Range<u64>) -> Result<Vec<u8>> {
+        let Some(view) = &mut self.view else {
+            return Err(Error::damaged("no directory"));
+        };
+        let frame = view.directory.small_frame_around(&range);
+        let cut = |content: &[u8], frame: &Range<u64>| {
+            content[(range.start - frame.start) as usize..(range.end - frame.start) as usize].to_vec()
+        };
+        if let Some((number, frame)) = &frame {
+            if let Some(content) = view.kept.get(*number) {
+                return Ok(cut(content, frame));
+            }
+        }
+        let whole = frame.as_ref().map_or(&range, |(_, frame)| frame);
+        let mut access = Access::new(&mut self.source, &view.directory, &self.limits)?;
+        let read = access
+            .read(whole.start, whole.end - whole.start)
+            .and_then(|bytes| access.close().map(|()| bytes));
+        self.frames_decoded += access.opened();
+        let bytes = read?;
+        let Some((number, frame)) = frame else {
+            return Ok(bytes);
+        };
+        let wanted = cut(&bytes, &frame);
+        view.kept.put(number, bytes);
+        Ok(wanted)
     }
 }
 
