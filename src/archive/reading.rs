@@ -88,6 +88,11 @@ impl Run {
         self.root
     }
 
+    /// How many zstd frames were decoded so far: a measure of the work done.
+    pub fn frames_decoded(&self) -> u64 {
+        self.archive.borrow().frames_decoded()
+    }
+
     fn at<T>(&self, member: &str, result: Result<T>) -> Result<T> {
         result.map_err(|error| error.in_member(member).in_file(&self.path))
     }

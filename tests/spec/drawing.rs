@@ -1,5 +1,6 @@
 //! Draws a plan into a folder that vanishes and hands back the members.
 
+use std::path::Path;
 use std::time::Duration;
 
 use pastproof::archive::wire;
@@ -66,11 +67,17 @@ impl Drawing {
     pub fn of(&self, plan: &Plan) -> Members {
         let folder = tempfile::TempDir::new().unwrap();
         let output = folder.path().join("drawn.tar.zst");
+        self.into_file(plan, &output);
+        Members::open(&output)
+    }
+
+    /// Draws the archive of `plan` into a file.
+    pub fn into_file(&self, plan: &Plan, output: &Path) {
         let request = Request {
             plan,
             seed: plan.seed_rule().seed().or(self.seed).expect("a seed"),
             first_depth: self.first_depth,
-            output: &output,
+            output,
             existing: Existing::Refuse,
             settings: Settings {
                 threads: Some(self.threads),
@@ -82,6 +89,5 @@ impl Drawing {
             cpu_features: Vec::new(),
         };
         draw(&request, &Still, &Silent, &Stop::default()).unwrap();
-        Members::open(&output)
     }
 }

@@ -1,5 +1,6 @@
 //! What is frozen: layers, schemas, golden archives, forgeries.
 
+mod access;
 mod damage;
 mod drawing;
 mod forge;
