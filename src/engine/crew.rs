@@ -9,6 +9,7 @@ use std::sync::Mutex;
 use rayon::prelude::*;
 
 use crate::engine::Engine;
+use crate::engine::compact::{self, Compact};
 use crate::engine::plain::Plain;
 use crate::engine::sliced::program::Program;
 use crate::engine::sliced::{Sliced, Strips};
@@ -25,6 +26,10 @@ pub enum Choice {
     Automatic,
     /// The definition.
     Plain,
+    /// Lane by lane, for any law.
+    Compact,
+    /// 512 lanes at a time, also where that is slow; lane by lane where it does not know the law.
+    Sliced,
 }
 
 /// How a crew works; none of it changes a result.
@@ -69,6 +74,7 @@ impl Settings {
 /// What an engine works from, made once for a law.
 enum Compiled {
     Plain,
+    Compact(Box<compact::Program>, Words),
     Sliced(Box<Program>, Words),
 }
 
@@ -98,15 +104,16 @@ const SAMPLES_A_THREAD: usize = 2;
 impl<'a> Crew<'a> {
     /// A crew for `map`.
     pub fn new(map: &'a RandomMap, settings: &Settings) -> Self {
-        let compiled = match settings.engine {
-            Choice::Plain => Compiled::Plain,
-            Choice::Automatic => match Program::if_fast(map) {
-                Some(program) => Compiled::Sliced(
-                    Box::new(program),
-                    settings.width.and_then(Width::words).unwrap_or_else(Width::widest),
-                ),
-                None => Compiled::Plain,
-            },
+        let words = settings.width.and_then(Width::words).unwrap_or_else(Width::widest);
+        let sliced = match settings.engine {
+            Choice::Automatic => Program::if_fast(map),
+            Choice::Sliced => Program::new(map),
+            Choice::Plain | Choice::Compact => None,
+        };
+        let compiled = match (settings.engine, sliced) {
+            (Choice::Plain, _) => Compiled::Plain,
+            (_, Some(program)) => Compiled::Sliced(Box::new(program), words),
+            (_, None) => Compiled::Compact(Box::new(compact::Program::new(map)), words),
         };
         Self {
             map,
@@ -125,6 +132,7 @@ impl<'a> Crew<'a> {
         let memory = self.memory / count as u64;
         match &self.compiled {
             Compiled::Plain => Box::new(Plain::new(self.map)),
+            Compiled::Compact(program, words) => Box::new(Compact::new(program, *words)),
             Compiled::Sliced(program, words) => Box::new(Sliced::new(self.map, program, *words, strips, memory)),
         }
     }
@@ -220,6 +228,7 @@ impl fmt::Display for Crew<'_> {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         match &self.compiled {
             Compiled::Plain => write!(f, "plain engine"),
+            Compiled::Compact(_, words) => write!(f, "compact engine, {}", words.width()),
             Compiled::Sliced(_, words) => write!(f, "bit-sliced engine, {}", words.width()),
         }
     }

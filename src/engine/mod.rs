@@ -5,6 +5,7 @@
 //! whatever is faster must agree with it bit for bit. Which one works on a law, and how threads
 //! share the work, is decided in `crew` alone. Nothing here knows an archive.
 
+pub mod compact;
 pub mod coupling;
 pub mod crew;
 pub mod leap;

@@ -287,7 +287,11 @@ fn digits_decide_as_the_definition_says() {
     }
     rules.sort_by_key(|rule| format!("{rule:?}"));
     rules.dedup();
-    assert_eq!(rules.len(), 5, "every rule, folded and not (the folded one always is): {rules:?}");
+    assert_eq!(
+        rules.len(),
+        5,
+        "every rule, folded and not (the folded one always is): {rules:?}"
+    );
 }
 
 /// The answer in the planes of a group with two neighbours a lane, if so many of them pull.

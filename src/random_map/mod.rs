@@ -197,6 +197,17 @@ impl RandomMap {
         &self.profiles[self.profile(site) as usize]
     }
 
+    /// Whether the law is a lattice gas: any number of occupied neighbours is one load.
+    pub fn is_gas(&self) -> bool {
+        self.gas
+    }
+
+    /// Every load that can occur at `site`, increasing, with its threshold. That of an Ising site is its local field
+    /// in units of its own; that of a gas is 0 or 1, for no and any occupied neighbour.
+    pub fn table(&self, site: u32) -> &[(i128, Threshold)] {
+        &self.profile_at(site).table
+    }
+
     /// The distinct thresholds that `site` could ever be asked, increasing.
     pub fn asked(&self, site: u32) -> &[Threshold] {
         &self.profile_at(site).asked

@@ -1,6 +1,7 @@
 //! What the samples are: known answers, exactness against enumeration and published values.
 
 mod agreement;
+mod agreement_compact;
 mod exactness;
 mod faults;
 mod properties;

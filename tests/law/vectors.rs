@@ -5,9 +5,11 @@
 
 use std::sync::Arc;
 
-use pastproof::engine::Stop;
+use pastproof::engine::compact::{Compact, Program};
 use pastproof::engine::coupling;
 use pastproof::engine::plain::Plain;
+use pastproof::engine::word::Width;
+use pastproof::engine::{Engine, Stop};
 use pastproof::lattice::{Boundary, Graph, Kind, Lattice, Regular, Spin};
 use pastproof::law::{Beta, Digits, Held, Law, Model};
 use pastproof::number::Exact;
@@ -92,11 +94,16 @@ fn digest(value: &Value) -> Digest {
     Digest::parse(value.as_str().unwrap()).unwrap()
 }
 
-/// Checks every sample of a case, from several first depths.
+/// Checks every sample of a case on both engines for any law, from several first depths.
 fn check(case: &Value, law: &Law, first_depths: &[u8]) {
-    let name = case["name"].as_str().unwrap();
     let map = RandomMap::new(law).unwrap();
-    let mut engine = Plain::new(&map);
+    let program = Program::new(&map);
+    check_engine(case, law, &mut Plain::new(&map), first_depths);
+    check_engine(case, law, &mut Compact::new(&program, Width::widest()), first_depths);
+}
+
+fn check_engine(case: &Value, law: &Law, engine: &mut dyn Engine, first_depths: &[u8]) {
+    let name = case["name"].as_str().unwrap();
     let observables = Observables::new(law);
     assert_eq!(
         u64::from(law.lattice().sites()),
@@ -130,7 +137,7 @@ fn check(case: &Value, law: &Law, first_depths: &[u8]) {
             sample: SampleIndex(index),
         };
         for first_depth in first_depths {
-            let drawn = coupling::draw(&mut engine, &address, *first_depth, limit, &Stop::default()).unwrap();
+            let drawn = coupling::draw(engine, &address, *first_depth, limit, &Stop::default()).unwrap();
             let at = format!("{name}, sample {index} from depth {first_depth}");
             assert_eq!(
                 drawn.depth,
