@@ -233,31 +233,3 @@ impl fmt::Display for Crew<'_> {
         }
     }
 }
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-    use crate::lattice::{Boundary, Kind, Lattice, Regular};
-    use crate::law::{Law, Model};
-    use crate::number::Exact;
-
-    /// By hand: 32 bytes a sample, 2 MiB a sample, and more threads than fit.
-    #[test]
-    fn few_large_samples_are_in_memory_at_once() {
-        let map = |extent| {
-            let square = Regular::new(Kind::Hypercubic, vec![extent; 2], vec![Boundary::Periodic; 2]).unwrap();
-            let model = Model::LatticeGas { activity: Exact::one() };
-            RandomMap::new(&Law::new(model, Lattice::Regular(square), None).unwrap()).unwrap()
-        };
-        let at_once = |map: &RandomMap, threads| {
-            let plain = Settings {
-                engine: Choice::Plain,
-                ..Settings::default()
-            };
-            Crew::new(map, &plain).at_once(threads)
-        };
-        let (small, large) = (map(16), map(4096));
-        assert_eq!([1, 2, 3].map(|threads| at_once(&small, threads)), [1024, 1024, 1026]);
-        assert_eq!([1, 2, 3, 64].map(|threads| at_once(&large, threads)), [4, 4, 6, 128]);
-    }
-}

@@ -1,8 +1,9 @@
 //! Properties that hold for every law: tried on random small graphs, always the same ones.
 
+use pastproof::engine::crew::{Choice, Crew, Settings};
 use pastproof::engine::plain::Plain;
 use pastproof::engine::{Engine, Stop, coupling};
-use pastproof::lattice::Spin;
+use pastproof::lattice::{Kind, Spin};
 use pastproof::law::Law;
 use pastproof::random_map::RandomMap;
 use pastproof::sample::Outcome;
@@ -10,7 +11,7 @@ use proptest::prelude::*;
 use proptest::test_runner::RngSeed;
 
 use crate::faults::Variant;
-use crate::systems::{address, gas, graph, held, ising};
+use crate::systems::{address, gas, graph, held, ising, regular};
 
 fn config() -> ProptestConfig {
     ProptestConfig {
@@ -59,6 +60,23 @@ fn laws() -> impl Strategy<Value = Law> {
             if fixed.is_empty() { law } else { held(&law, &fixed) }
         },
     )
+}
+
+/// By hand: 32 bytes a sample, 2 MiB a sample, and more threads than fit.
+#[test]
+fn few_large_samples_are_in_memory_at_once() {
+    let at_once = |extent, threads: &[usize]| {
+        let law = gas(regular(Kind::Hypercubic, &[extent, extent], "periodic"), "1");
+        let map = RandomMap::new(&law).unwrap();
+        let plain = Settings {
+            engine: Choice::Plain,
+            ..Settings::default()
+        };
+        let crew = Crew::new(&map, &plain);
+        threads.iter().map(|threads| crew.at_once(*threads)).collect::<Vec<_>>()
+    };
+    assert_eq!(at_once(16, &[1, 2, 3]), [1024, 1024, 1026]);
+    assert_eq!(at_once(4096, &[1, 2, 3, 64]), [4, 4, 6, 128]);
 }
 
 /// Beyond this depth a sample may stay unfinished, which is a sample too.

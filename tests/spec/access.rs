@@ -23,7 +23,7 @@ fn frames_for_one(samples: u64) -> Vec<u64> {
          lattice = {{ kind = \"hypercubic\", extents = [64] }}\nbeta = 0\nsamples = {samples}\n"
     );
     let plan = Plan::read(text.as_bytes(), &mut |_| unreachable!("no files")).unwrap();
-    Drawing::default().draw_to(&plan, &file);
+    Drawing::default().draw_into(&plan, &file);
     let ask = |sample: u64| {
         let run = Run::open(&file).unwrap();
         let which = Which::One(EnsembleIndex(0), SampleIndex(sample));

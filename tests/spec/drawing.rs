@@ -67,12 +67,12 @@ impl Drawing {
     pub fn of(&self, plan: &Plan) -> Members {
         let folder = tempfile::TempDir::new().unwrap();
         let output = folder.path().join("drawn.tar.zst");
-        self.draw_to(plan, &output);
+        self.draw_into(plan, &output);
         Members::open(&output)
     }
 
     /// Draws the archive of `plan` into a file.
-    pub fn draw_to(&self, plan: &Plan, output: &Path) {
+    pub fn draw_into(&self, plan: &Plan, output: &Path) {
         let request = Request {
             plan,
             seed: plan.seed_rule().seed().or(self.seed).expect("a seed"),
