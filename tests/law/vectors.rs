@@ -5,8 +5,8 @@
 
 use std::sync::Arc;
 
-use pastproof::engine::compact::{Compact, Program};
 use pastproof::engine::coupling;
+use pastproof::engine::crew::{Choice, Crew, Settings};
 use pastproof::engine::plain::Plain;
 use pastproof::engine::word::Width;
 use pastproof::engine::{Engine, Stop};
@@ -94,12 +94,20 @@ fn digest(value: &Value) -> Digest {
     Digest::parse(value.as_str().unwrap()).unwrap()
 }
 
-/// Checks every sample of a case on both engines for any law, from several first depths.
+/// Checks every sample of a case on every engine at every width, from several first depths.
 fn check(case: &Value, law: &Law, first_depths: &[u8]) {
     let map = RandomMap::new(law).unwrap();
-    let program = Program::new(&map);
     check_engine(case, law, &mut Plain::new(&map), first_depths);
-    check_engine(case, law, &mut Compact::new(&program, Width::widest()), first_depths);
+    for width in Width::here() {
+        for engine in [Choice::Compact, Choice::Sliced] {
+            let settings = Settings {
+                engine,
+                width: Some(width),
+                ..Settings::default()
+            };
+            check_engine(case, law, Crew::new(&map, &settings).engine().as_mut(), first_depths);
+        }
+    }
 }
 
 fn check_engine(case: &Value, law: &Law, engine: &mut dyn Engine, first_depths: &[u8]) {
