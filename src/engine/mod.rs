@@ -44,6 +44,16 @@ pub trait Engine: Send {
     fn bounds(&self) -> [Configuration; 2];
 }
 
+impl<E: Engine + ?Sized> Engine for Box<E> {
+    fn attempt(&mut self, address: &Address, depth: u8, stop: &Stop) -> Result<Attempt> {
+        (**self).attempt(address, depth, stop)
+    }
+
+    fn bounds(&self) -> [Configuration; 2] {
+        (**self).bounds()
+    }
+}
+
 /// A request to stop, seen within one sweep.
 #[derive(Clone, Debug, Default)]
 pub struct Stop(Arc<AtomicBool>);

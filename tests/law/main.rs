@@ -4,6 +4,7 @@ mod agreement;
 mod agreement_compact;
 mod exactness;
 mod faults;
+mod physics;
 mod properties;
 mod statistics;
 mod systems;

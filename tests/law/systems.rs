@@ -5,7 +5,7 @@ use std::sync::Arc;
 use pastproof::engine::Engine;
 use pastproof::engine::Stop;
 use pastproof::engine::coupling;
-use pastproof::engine::plain::Plain;
+use pastproof::engine::crew::{Crew, Settings};
 use pastproof::lattice::{Boundary, Graph, Kind, Lattice, Regular, Spin};
 use pastproof::law::{Beta, Critical, Held, Law, Model};
 use pastproof::number::Exact;
@@ -85,10 +85,15 @@ pub fn draw_with<E: Engine>(engine: impl Fn() -> E + Sync, law: &Law, count: u64
     (0..count).into_par_iter().map_init(&engine, draw).collect()
 }
 
-/// The first `count` samples that the plain engine gives.
+/// The first `count` samples that draw and replay give.
 pub fn draw(law: &Law, count: u64) -> Vec<Sample> {
     let map = RandomMap::new(law).unwrap();
-    draw_with(|| Plain::new(&map), law, count)
+    let settings = Settings {
+        memory: 64 << 20,
+        ..Settings::default()
+    };
+    let crew = Crew::new(&map, &settings);
+    draw_with(|| crew.engine(), law, count)
 }
 
 pub fn configurations(samples: &[Sample]) -> impl Iterator<Item = &Configuration> {
