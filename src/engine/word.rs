@@ -31,6 +31,8 @@ impl Block {
 pub enum Width {
     /// 64 bits, on every machine.
     Portable,
+    /// 128 bits, on every x86-64.
+    Sse2,
     /// 128 bits.
     Neon,
     /// 256 bits.
@@ -40,12 +42,13 @@ pub enum Width {
 }
 
 impl Width {
-    const ALL: [Self; 4] = [Self::Portable, Self::Neon, Self::Avx2, Self::Avx512];
+    const ALL: [Self; 5] = [Self::Portable, Self::Sse2, Self::Neon, Self::Avx2, Self::Avx512];
 
     /// Whether this machine has it.
     pub fn is_here(self) -> bool {
         match self {
             Self::Portable => true,
+            Self::Sse2 => cfg!(target_arch = "x86_64"),
             #[cfg(target_arch = "aarch64")]
             Self::Neon => std::arch::is_aarch64_feature_detected!("neon"),
             #[cfg(target_arch = "x86_64")]
@@ -86,6 +89,7 @@ impl fmt::Display for Width {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
         f.write_str(match self {
             Self::Portable => "64-bit words",
+            Self::Sse2 => "128-bit words (SSE2)",
             Self::Neon => "128-bit words (NEON)",
             Self::Avx2 => "256-bit words (AVX2)",
             Self::Avx512 => "512-bit words (AVX-512)",
@@ -149,6 +153,8 @@ pub fn call<K: Kernel>(words: Words, kernel: K) -> K::Output {
         #[cfg(target_arch = "aarch64")]
         // SAFETY: the machine has NEON, or there were no such words.
         Width::Neon => unsafe { neon::call(kernel) },
+        #[cfg(target_arch = "x86_64")]
+        Width::Sse2 => kernel.run::<sse2::Sse2>(),
         #[cfg(target_arch = "x86_64")]
         // SAFETY: the machine has AVX2 and BMI2, or there were no such words.
         Width::Avx2 => unsafe { avx2::call(kernel) },
@@ -312,6 +318,95 @@ mod neon {
         fn is_none(self) -> bool {
             let [a, b, c, d] = self.0;
             unsafe { vmaxvq_u32(vreinterpretq_u32_u64(vorrq_u64(vorrq_u64(a, b), vorrq_u64(c, d)))) == 0 }
+        }
+        #[inline(always)]
+        fn fill(chains: &mut Chains, out: &mut [u64]) {
+            chains.fill(out);
+        }
+    }
+}
+
+#[cfg(target_arch = "x86_64")]
+mod sse2 {
+    //! Four 128-bit registers.
+    use std::arch::x86_64::*;
+
+    use super::{Chains, Lanes, WORDS};
+
+    #[derive(Clone, Copy)]
+    pub(super) struct Sse2([__m128i; 4]);
+
+    impl Sse2 {
+        #[inline(always)]
+        fn each(self, other: Self, work: impl Fn(__m128i, __m128i) -> __m128i) -> Self {
+            Self(std::array::from_fn(|at| work(self.0[at], other.0[at])))
+        }
+    }
+
+    // SAFETY of every block below: SSE2 is part of x86-64; loads and stores are unaligned ones and stay
+    // inside the array that the reference covers.
+    impl Lanes for Sse2 {
+        #[inline(always)]
+        fn load(words: &[u64; WORDS]) -> Self {
+            Self(std::array::from_fn(|at| unsafe {
+                _mm_loadu_si128(words[2 * at..2 * at + 2].as_ptr().cast())
+            }))
+        }
+        #[inline(always)]
+        fn store(self, words: &mut [u64; WORDS]) {
+            for (at, part) in self.0.into_iter().enumerate() {
+                unsafe { _mm_storeu_si128(words[2 * at..2 * at + 2].as_mut_ptr().cast(), part) };
+            }
+        }
+        #[inline(always)]
+        fn window(words: &[u64; WORDS + 1], shift: u64) -> Self {
+            // counts of 64 and more give 0
+            let (right, left) = unsafe { (_mm_cvtsi64_si128(shift as i64), _mm_cvtsi64_si128(64 - shift as i64)) };
+            Self(std::array::from_fn(|at| unsafe {
+                let low = _mm_loadu_si128(words[2 * at..2 * at + 2].as_ptr().cast());
+                let high = _mm_loadu_si128(words[2 * at + 1..2 * at + 3].as_ptr().cast());
+                _mm_or_si128(_mm_srl_epi64(low, right), _mm_sll_epi64(high, left))
+            }))
+        }
+        #[inline(always)]
+        fn splat(word: u64) -> Self {
+            Self([unsafe { _mm_set1_epi64x(word as i64) }; 4])
+        }
+        #[inline(always)]
+        fn and(self, other: Self) -> Self {
+            self.each(other, |a, b| unsafe { _mm_and_si128(a, b) })
+        }
+        #[inline(always)]
+        fn or(self, other: Self) -> Self {
+            self.each(other, |a, b| unsafe { _mm_or_si128(a, b) })
+        }
+        #[inline(always)]
+        fn xor(self, other: Self) -> Self {
+            self.each(other, |a, b| unsafe { _mm_xor_si128(a, b) })
+        }
+        #[inline(always)]
+        fn without(self, other: Self) -> Self {
+            self.each(other, |a, b| unsafe { _mm_andnot_si128(b, a) })
+        }
+        #[inline(always)]
+        fn select(self, yes: Self, no: Self) -> Self {
+            self.and(yes.xor(no)).xor(no)
+        }
+        #[inline(always)]
+        fn or_and(self, a: Self, b: Self) -> Self {
+            self.or(a.and(b))
+        }
+        #[inline(always)]
+        fn and_xor(self, a: Self, b: Self) -> Self {
+            self.and(a.xor(b))
+        }
+        #[inline(always)]
+        fn is_none(self) -> bool {
+            let [a, b, c, d] = self.0;
+            unsafe {
+                let all = _mm_or_si128(_mm_or_si128(a, b), _mm_or_si128(c, d));
+                _mm_movemask_epi8(_mm_cmpeq_epi8(all, _mm_setzero_si128())) == 0xffff
+            }
         }
         #[inline(always)]
         fn fill(chains: &mut Chains, out: &mut [u64]) {
