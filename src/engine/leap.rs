@@ -15,10 +15,10 @@ pub const CHAINS: usize = 32;
 const FEW: usize = 2;
 
 /// Words made ahead; the first time fewer, because many generators give only some.
-const AHEAD: usize = 512;
-const FIRST: usize = 64;
+const AHEAD: usize = 1024;
+const FIRST: usize = 128;
 /// Words that may be left over when more are made.
-const LEFT: usize = 64;
+const LEFT: usize = 128;
 
 /// The affine map of n steps: the multiplier, and what the increment is multiplied by.
 const fn leap(steps: usize) -> (u128, u128) {

@@ -48,6 +48,10 @@ fn decide_lists(
     at_least!(0 1 2 3 4 5 7 9 13 17)
 }
 
+/// [`Pattern::sure`] of a group of 512 lanes, and digits that nearly always suffice for it.
+const FULL_SURE: usize = 7;
+const FULL_MOST: usize = 16;
+
 struct Decide<'a, const C: usize> {
     program: &'a Program,
     classes: &'a [Class],
@@ -118,17 +122,35 @@ fn digits<L: Lanes, const C: usize>(program: &Program, pattern: &Pattern, leap: 
             *equal = asks(&pattern.asks, at);
         }
     }
-    // a group is hardly ever decided within its first digits: take them without looking, and start
-    // again in the rare case that it was
-    leap.make_ready::<L>(pattern.sure * count);
+    // Ahead of the answer to "is the group decided?", which would come too late for each digit: a group
+    // is hardly ever decided within its first digits, and a full one hardly ever after many. What is
+    // compared once a lane is decided changes nothing; in the rare other cases start again.
     let mut ahead = race;
-    for digits in 0..pattern.sure {
-        ahead.digit(program, place + digits, leap.glance(digits * count));
-    }
-    if !ahead.is_over() {
-        leap.skip(pattern.sure * count);
-        place += pattern.sure;
-        race = ahead;
+    if pattern.sure == FULL_SURE {
+        leap.make_ready::<L>(FULL_MOST * WORDS);
+        for digits in 0..FULL_SURE {
+            ahead.digit(program, place + digits, leap.glance(digits * WORDS));
+        }
+        let sure = !ahead.is_over();
+        let mut digits_drawn = FULL_SURE;
+        for digits in FULL_SURE..FULL_MOST {
+            digits_drawn += usize::from(!ahead.is_over());
+            ahead.digit(program, place + digits, leap.glance(digits * WORDS));
+        }
+        if sure && ahead.is_over() {
+            leap.skip(digits_drawn * WORDS);
+            race = ahead;
+        }
+    } else {
+        leap.make_ready::<L>(pattern.sure * count);
+        for digits in 0..pattern.sure {
+            ahead.digit(program, place + digits, leap.glance(digits * count));
+        }
+        if !ahead.is_over() {
+            leap.skip(pattern.sure * count);
+            place += pattern.sure;
+            race = ahead;
+        }
     }
     while !race.is_over() {
         let word = leap.next::<L>(count);
