@@ -196,3 +196,6 @@ impl ByRow<'_> {
         rows.iter().filter(|row| above(row)).count()
     }
 }
+
+#[cfg(test)]
+mod tests;

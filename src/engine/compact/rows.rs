@@ -94,7 +94,8 @@ impl Cuts {
         Self::of(asked, counts)
     }
 
-    fn of(asked: Vec<u128>, counts: Vec<u32>) -> Self {
+    /// The cuts of these thresholds, with a count for each number of them that U may not fall below.
+    pub(super) fn of(asked: Vec<u128>, counts: Vec<u32>) -> Self {
         let mut cuts = Self {
             asked,
             counts,
@@ -124,9 +125,9 @@ impl Cuts {
         0..self.asked.len()
     }
 
-    /// Which of the thresholds `among` which all undecided ones are stay so after `digits` digits, the top
-    /// ones of `number`, which has no others: those that exceed the least U that begins so and not the
-    /// greatest (`STREAM.md` §3).
+    /// The thresholds that `digits` digits leave undecided: those above the least U that begins so and not
+    /// above the greatest (`STREAM.md` §3). The digits are the top ones of `number`, which has no others;
+    /// fewer digits left only thresholds `among` these undecided.
     pub(super) fn undecided(&self, number: u128, digits: u32, among: Range<usize>) -> Range<usize> {
         let greatest = number | u128::MAX.checked_shr(digits).unwrap_or(0);
         let asked = &self.asked[among.clone()];

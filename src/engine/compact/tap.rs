@@ -30,6 +30,15 @@ impl Tap {
         }
     }
 
+    /// A tap before which these words lie open.
+    #[cfg(test)]
+    pub(super) fn holding(open: Vec<[u64; WORDS]>) -> Self {
+        Self {
+            open,
+            ..Self::new(Leap::new([0; 2], 1))
+        }
+    }
+
     /// Begins anew, at the first word of `leap`.
     pub(super) fn refit(&mut self, leap: Leap) {
         self.leap = leap;
