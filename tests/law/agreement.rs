@@ -193,6 +193,14 @@ fn the_bit_sliced_engine_agrees_around_held_sites() {
     }
 }
 
+/// Where every site is held nothing is drawn.
+#[test]
+fn the_bit_sliced_engine_agrees_where_every_site_is_held() {
+    let law = ising(regular(Kind::Hypercubic, &[2, 2], "periodic"), "0.3", "0");
+    let sites = [0, 1, 2, 3].map(|site| (site, Spin::from_bit(site % 2 == 0)));
+    assert!(compare_sliced(&held(&law, &sites), &DEPTHS).is_some());
+}
+
 /// An engine that works on the threads of a pool.
 struct Pooled<'a>(&'a rayon::ThreadPool, Sliced<'a>);
 

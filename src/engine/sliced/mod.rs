@@ -135,7 +135,7 @@ impl<'a> Sliced<'a> {
             },
             store: Store::new(bytes),
             batches: vec![Block::NONE; (program.strips() * BATCH * program.planes()).max(TOGETHER)],
-            together: (TOGETHER / program.planes_of_sweep().max(1)) as u64,
+            together: TOGETHER.checked_div(program.planes_of_sweep()).unwrap_or(0) as u64,
         }
     }
 
