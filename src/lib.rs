@@ -102,6 +102,7 @@
 pub mod archive;
 pub mod audit;
 pub mod canonical;
+pub mod clock;
 pub mod engine;
 pub mod error;
 pub mod exact;
@@ -114,6 +115,7 @@ pub mod plan;
 pub mod quantity;
 pub mod random_map;
 pub mod sample;
+pub mod statistics;
 pub mod stream;
 pub mod threshold;
 pub mod tree;

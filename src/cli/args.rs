@@ -1,6 +1,7 @@
 //! The words of the command line: text to requests. Touches no disk.
 
 use std::path::PathBuf;
+use std::time::Duration;
 
 use clap::{Args, Parser, Subcommand};
 use pastproof::engine::crew::{Choice, Settings};
@@ -17,7 +18,7 @@ pub struct Arguments {
 const EXITS: &str = "\
 Exit codes:
   0  done; for replay and audit: everything examined holds
-  1  the answer is no: a check failed
+  1  the answer is no: a check failed, or a forecast advises against the plan
   2  the request is wrong: flags or plan
   3  the archive cannot be read: damaged, not supported, or nothing in it
   4  the machine failed: input or output, space, memory
@@ -33,6 +34,13 @@ Example:
 A plan is a TOML file, described in README.md; without one an embedded example
 is drawn. The archive is read back and audited before the command ends.")]
     Draw(Draw),
+    /// Say what a plan will take, from a short pilot on that very plan
+    #[command(after_help = "\
+Example:
+  pastproof forecast plan.toml --minutes 5 --threads 64
+Nothing is written and no sample of the run is drawn. Exit code 1 means that some
+ensemble is not advisable as it is planned.")]
+    Forecast(Forecast),
     /// Show what an archive holds: laws, counts, seed, root and seal
     #[command(after_help = "\
 Example:
@@ -79,6 +87,20 @@ pub struct Draw {
     #[arg(long)]
     pub require_clean: bool,
     /// Answer in JSON (schema/draw.schema.json)
+    #[arg(long)]
+    pub json: bool,
+}
+
+#[derive(Args, Debug)]
+pub struct Forecast {
+    /// The plan (TOML); without it the embedded example is taken
+    pub plan: Option<PathBuf>,
+    /// The pilot ends after so long; 0.1 is six seconds
+    #[arg(long, value_name = "M", value_parser = minutes, default_value = "1")]
+    pub minutes: Duration,
+    #[command(flatten)]
+    pub work: Work,
+    /// Answer in JSON (schema/forecast.schema.json)
     #[arg(long)]
     pub json: bool,
 }
@@ -160,6 +182,14 @@ fn threads(text: &str) -> Result<usize, String> {
     match text.parse() {
         Ok(count @ 1..=1024) => Ok(count),
         _ => Err("expected 1 to 1024".into()),
+    }
+}
+
+/// At most a week.
+fn minutes(text: &str) -> Result<Duration, String> {
+    match text.parse::<f64>() {
+        Ok(minutes) if minutes > 0.0 && minutes <= 10_080.0 => Ok(Duration::from_secs_f64(60.0 * minutes)),
+        _ => Err("expected a number above 0, at most 10080".into()),
     }
 }
 

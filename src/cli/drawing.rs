@@ -8,6 +8,7 @@ use pastproof::archive::reading::Run;
 use pastproof::archive::wire;
 use pastproof::audit::seal::{self, Anchors};
 use pastproof::audit::{Check, Conclusion, replay};
+use pastproof::clock::Clock;
 use pastproof::engine::Stop;
 use pastproof::engine::coupling::Proof;
 use pastproof::engine::crew::Settings;
@@ -15,7 +16,7 @@ use pastproof::error::{Error, ErrorKind, Result};
 use pastproof::observer::Observer;
 use pastproof::plan::{self, Plan, slug};
 use pastproof::quantity::{Digest, Seed};
-use pastproof::verb::draw::{self, Clock, Existing, Sealed};
+use pastproof::verb::draw::{self, Existing, Sealed};
 use pastproof::verb::examine::{self, examine};
 use pastproof::verb::show;
 use serde::Serialize;
@@ -26,7 +27,7 @@ use super::args;
 use super::checkout::{self, Found};
 use super::machine::{self, Machine};
 use super::program::Program;
-use super::terminal::{Align, Progress, Table, Terminal, Tone, wrapped};
+use super::terminal::{Align, Progress, Table, Terminal, Tone, Unit, wrapped};
 use super::verdicts;
 
 /// The plan that is drawn where none is named.
@@ -37,10 +38,8 @@ const LARGEST_INPUT: u64 = 256 << 20;
 
 /// Draws, seals, reads back.
 pub fn draw(request: &args::Draw, terminal: &Terminal, stop: &Stop) -> Result<Exit> {
-    let (plan, found) = match &request.plan {
-        Some(path) => (read_plan(path)?, checkout::find(path)),
-        None => (example()?, Found::Nowhere),
-    };
+    let plan = plan(request.plan.as_deref())?;
+    let found = request.plan.as_deref().map_or(Found::Nowhere, checkout::find);
     let output = request
         .output
         .clone()
@@ -107,7 +106,7 @@ pub fn draw(request: &args::Draw, terminal: &Terminal, stop: &Stop) -> Result<Ex
     };
     let total = plan.ensembles().iter().map(|ensemble| ensemble.samples()).sum();
     let sealed = {
-        let progress = Shown::new(terminal, total, request.work.verbose);
+        let progress = Shown::new(terminal, total, Unit::Samples, request.work.verbose);
         draw::draw(&drawing, &Watch(Instant::now()), &progress, stop)?
     };
     let answer = Answer::new(
@@ -135,9 +134,9 @@ pub struct Shown<'a> {
 
 impl<'a> Shown<'a> {
     /// Progress over `total` pieces on `terminal`.
-    pub fn new(terminal: &'a Terminal, total: u64, verbose: bool) -> Self {
+    pub fn new(terminal: &'a Terminal, total: u64, unit: Unit, verbose: bool) -> Self {
         Self {
-            progress: terminal.progress(total),
+            progress: terminal.progress(total, unit),
             notes: verbose.then_some(terminal),
         }
     }
@@ -159,7 +158,8 @@ impl Observer for Shown<'_> {
     }
 }
 
-struct Watch(Instant);
+/// The program's clock; its time begins when it is made.
+pub struct Watch(pub Instant);
 
 impl Clock for Watch {
     fn utc(&self) -> String {
@@ -169,6 +169,15 @@ impl Clock for Watch {
     fn elapsed(&self) -> Duration {
         self.0.elapsed()
     }
+
+    fn busy(&self) -> Duration {
+        machine::busy().unwrap_or_else(|| self.0.elapsed())
+    }
+}
+
+/// The plan at `path`, or the embedded example.
+pub fn plan(path: Option<&Path>) -> Result<Plan> {
+    path.map_or_else(example, read_plan)
 }
 
 fn example() -> Result<Plan> {
@@ -244,6 +253,11 @@ fn repository(found: &Found, with_source: bool) -> Result<(Option<wire::Reposito
         remote: if with_source { checkout.origin.clone() } else { None },
     };
     Ok((Some(repository), patch))
+}
+
+/// What ensembles of one table have in common.
+pub fn heading(ensemble: &plan::Ensemble) -> String {
+    format!("{}: {}", ensemble.law().word(), ensemble.law().lattice())
 }
 
 /// The answer of `draw`, as `schema/draw.schema.json` describes it.
@@ -364,7 +378,6 @@ impl Answer {
 
     /// A table for each stretch of ensembles with one model and one lattice.
     fn print_ensembles(&self, plan: &Plan, terminal: &Terminal) -> Result<()> {
-        let heading = |ensemble: &plan::Ensemble| format!("{}: {}", ensemble.law().word(), ensemble.law().lattice());
         let pairs: Vec<_> = self.ensembles.iter().zip(plan.ensembles()).collect();
         for stretch in pairs.chunk_by(|(_, before), (_, after)| heading(before) == heading(after)) {
             let mut table = Table::new(&[

@@ -4,6 +4,7 @@
 //! of the machine nor of its user is ever asked for.
 
 use std::num::NonZero;
+use std::time::Duration;
 
 use chrono::{DateTime, SecondsFormat, Utc};
 
@@ -35,6 +36,18 @@ impl Machine {
 /// The present second in UTC as RFC 3339 writes it, such as `2031-03-04T05:06:07Z`.
 pub fn now() -> String {
     stamp(Utc::now())
+}
+
+/// Time that this thread has had a processor, where the system tells (POSIX, `clock_gettime`).
+#[cfg(unix)]
+pub fn busy() -> Option<Duration> {
+    let time = rustix::time::clock_gettime(rustix::time::ClockId::ThreadCPUTime);
+    Duration::try_from(time).ok()
+}
+
+#[cfg(not(unix))]
+pub fn busy() -> Option<Duration> {
+    None
 }
 
 fn stamp(time: DateTime<Utc>) -> String {
@@ -75,6 +88,19 @@ mod tests {
         assert_eq!(stamp(time), "2025-03-02T06:50:45Z");
         let now = now();
         assert!(DateTime::parse_from_rfc3339(&now).is_ok() && now.len() == 20, "{now}");
+    }
+
+    /// A thread that waits has no processor.
+    #[cfg(unix)]
+    #[test]
+    fn waiting_is_not_being_busy() {
+        let begin = busy().unwrap();
+        std::thread::sleep(Duration::from_millis(50));
+        assert!(busy().unwrap() - begin < Duration::from_millis(25));
+        let start = std::time::Instant::now();
+        while busy().unwrap() - begin < Duration::from_millis(25) {
+            assert!(start.elapsed() < Duration::from_secs(60), "working makes busy");
+        }
     }
 
     /// Expected: the same flags as the kernel shows, where there is a kernel that shows them.

@@ -22,6 +22,7 @@ macro_rules! needs {
 mod args;
 mod checkout;
 mod drawing;
+mod forecasting;
 mod machine;
 mod program;
 mod signals;
@@ -79,6 +80,7 @@ pub fn main() -> ExitCode {
     };
     let json = match &arguments.verb {
         Verb::Draw(args::Draw { json, .. })
+        | Verb::Forecast(args::Forecast { json, .. })
         | Verb::Show(args::Show { json, .. })
         | Verb::Replay(args::Replay { json, .. })
         | Verb::Audit(args::Audit { json, .. }) => *json,
@@ -119,6 +121,7 @@ fn dispatch(verb: Verb, terminal: &Terminal) -> Result<Exit> {
     let stop = Stop::at(signals::listen()?);
     match verb {
         Verb::Draw(request) => drawing::draw(&request, terminal, &stop),
+        Verb::Forecast(request) => forecasting::forecast(&request, terminal, &stop),
         Verb::Show(request) => verdicts::show(&request, terminal),
         Verb::Replay(request) => verdicts::replay(&request, terminal, &stop),
         Verb::Audit(request) => verdicts::audit(&request, terminal),

@@ -11,7 +11,7 @@ mod progress;
 mod table;
 
 pub use self::lines::wrapped;
-pub use self::progress::Progress;
+pub use self::progress::{Progress, Unit};
 pub use self::table::{Align, Table};
 
 use std::ffi::OsStr;
@@ -164,10 +164,10 @@ impl Terminal {
         }
     }
 
-    /// Starts to show how far the drawing of `total` samples is.
-    pub fn progress(&self, total: u64) -> Progress<'_> {
+    /// Starts to show how far a task of so many units is.
+    pub fn progress(&self, total: u64, unit: Unit) -> Progress<'_> {
         let terminal = self.streams().err.shows.terminal;
-        let progress = Progress::new(self, total, terminal);
+        let progress = Progress::new(self, total, unit, terminal);
         self.streams().bar = progress.bar().cloned();
         progress
     }

@@ -16,7 +16,7 @@ use serde_json::Value;
 use super::Exit;
 use super::args;
 use super::drawing::Shown;
-use super::terminal::{Terminal, Tone, wrapped};
+use super::terminal::{Terminal, Tone, Unit, wrapped};
 
 /// Shows what an archive holds.
 pub fn show(request: &args::Show, terminal: &Terminal) -> Result<Exit> {
@@ -161,7 +161,7 @@ pub fn replay(request: &args::Replay, terminal: &Terminal, stop: &Stop) -> Resul
         replay::Which::All => run.record().ensembles.iter().map(|ensemble| ensemble.samples).sum(),
     };
     let report = {
-        let progress = Shown::new(terminal, total, request.work.verbose);
+        let progress = Shown::new(terminal, total, Unit::Samples, request.work.verbose);
         replay::replay(&run, which, proof, &request.work.settings(), &progress, stop)?
     };
     let sample = report
@@ -250,7 +250,7 @@ pub fn audit(request: &args::Audit, terminal: &Terminal) -> Result<Exit> {
         .map(|ensemble| ensemble.samples)
         .sum();
     let report = {
-        let progress = Shown::new(terminal, total, false);
+        let progress = Shown::new(terminal, total, Unit::Samples, false);
         seal::audit(
             &request.archive,
             Anchors {

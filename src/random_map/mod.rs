@@ -17,7 +17,7 @@ use crate::error::Result;
 use crate::lattice::{Neighbour, Spin};
 use crate::law::{Digits, Held, Law};
 use crate::number::Exact;
-use crate::threshold::Threshold;
+use crate::threshold::{self, Threshold};
 
 use adjacency::Adjacency;
 use labels::Labels;
@@ -313,6 +313,29 @@ impl RandomMap {
             pulls.map(|pull| f64::from(pull.ends) * step(pull.weight)).sum()
         };
         self.profiles.iter().map(spread).fold(0.0, f64::max)
+    }
+}
+
+/// Why the bounds of a law may take very long to meet, or never do.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub enum Doubt {
+    /// It lies below the critical temperature: they meet only after very many sweeps.
+    Cold,
+    /// It is frustrated: they only enclose the true states and may stay apart.
+    Frustrated,
+}
+
+impl Doubt {
+    /// What is to be doubted before anything is drawn; nothing where the bounds are sure to meet fast. `map`
+    /// is the map of `law`.
+    pub fn of(law: &Law, map: &RandomMap) -> Option<Self> {
+        if map.spread() < 1.0 {
+            None
+        } else if !map.is_ordered() {
+            Some(Self::Frustrated)
+        } else {
+            threshold::is_below_critical_temperature(law).then_some(Self::Cold)
+        }
     }
 }
 

@@ -19,6 +19,7 @@ use crate::archive::readme;
 use crate::archive::table::{Columns, Outcome, Row};
 use crate::archive::wire;
 use crate::canonical;
+use crate::clock::Clock;
 use crate::engine::Engine;
 use crate::engine::Stop;
 use crate::engine::coupling;
@@ -34,14 +35,6 @@ use crate::sample::bytes_per_sample;
 use crate::stream;
 use crate::stream::Address;
 use crate::tree::{self, Tree};
-
-/// What a run asks of the world around it.
-pub trait Clock: Sync {
-    /// The time now, RFC 3339, UTC.
-    fn utc(&self) -> String;
-    /// Time since some fixed moment.
-    fn elapsed(&self) -> Duration;
-}
 
 /// What to do where the archive's name is taken.
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]

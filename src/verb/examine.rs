@@ -9,10 +9,9 @@ use crate::engine::crew::{Crew, Settings};
 use crate::error::{Error, Result};
 use crate::plan::{Ensemble, Plan};
 use crate::quantity::{Digest, EnsembleIndex, SampleIndex, Seed};
-use crate::random_map::RandomMap;
+use crate::random_map::{Doubt, RandomMap};
 use crate::sample::bytes_per_sample;
 use crate::stream::Address;
-use crate::threshold;
 
 /// Bytes of all packed samples of a run, at most.
 const MOST_BYTES: u64 = 1 << 42;
@@ -32,21 +31,32 @@ pub struct Caution {
     pub what: String,
 }
 
+/// Refuses a plan whose samples are more than an archive may hold, before any work.
+///
+/// # Errors
+/// [`crate::error::ErrorKind::TooLarge`], with line and ensemble.
+pub fn admit(plan: &Plan) -> Result<()> {
+    let mut bytes = 0;
+    for (number, ensemble) in plan.numbered() {
+        bytes += bytes_per_sample(ensemble.law().lattice().sites()) as u64 * ensemble.samples();
+        if bytes > MOST_BYTES {
+            let error = Error::too_large("bytes of all samples so far", bytes, MOST_BYTES).at_field("samples");
+            return Err(error.at_line(ensemble.line()).at_ensemble(number));
+        }
+    }
+    Ok(())
+}
+
 /// Checks every law of `plan` before any work, and says where the bounds cannot be expected to meet.
 ///
 /// # Errors
-/// Those of [`RandomMap::new`], and [`crate::error::ErrorKind::TooLarge`] for more bytes than a run may have,
-/// with line and ensemble; [`crate::error::ErrorKind::Stopped`].
+/// Those of [`admit`] and of [`RandomMap::new`], with line and ensemble;
+/// [`crate::error::ErrorKind::Stopped`].
 pub fn examine(plan: &Plan, stop: &Stop) -> Result<Vec<Caution>> {
-    let (mut cautions, mut bytes, mut lanes_left) = (Vec::new(), 0, TRIAL_LANES);
+    admit(plan)?;
+    let (mut cautions, mut lanes_left) = (Vec::new(), TRIAL_LANES);
     for (number, ensemble) in plan.numbered() {
         let at = |error: Error| error.at_line(ensemble.line()).at_ensemble(number);
-        bytes += bytes_per_sample(ensemble.law().lattice().sites()) as u64 * ensemble.samples();
-        if bytes > MOST_BYTES {
-            return Err(at(
-                Error::too_large("bytes of all samples so far", bytes, MOST_BYTES).at_field("samples")
-            ));
-        }
         let map = RandomMap::new(ensemble.law()).map_err(at)?;
         if let Some(what) = caution(ensemble, &map, &mut lanes_left, stop)? {
             cautions.push(Caution { ensemble: number, what });
@@ -57,16 +67,16 @@ pub fn examine(plan: &Plan, stop: &Stop) -> Result<Vec<Caution>> {
 
 /// Why the bounds of this law may not meet, if there is a reason.
 fn caution(ensemble: &Ensemble, map: &RandomMap, lanes_left: &mut u64, stop: &Stop) -> Result<Option<String>> {
-    if map.spread() < 1.0 {
-        return Ok(None);
-    }
     let limit = ensemble.depth_limit();
     let end = format!("a sample that has not met after 2^{limit} sweeps is recorded as unfinished, never dropped");
-    if map.is_ordered() {
-        let cold = threshold::is_below_critical_temperature(ensemble.law());
-        return Ok(
-            cold.then(|| format!("below the critical temperature the bounds meet only after very many sweeps; {end}"))
-        );
+    match Doubt::of(ensemble.law(), map) {
+        None => return Ok(None),
+        Some(Doubt::Cold) => {
+            return Ok(Some(format!(
+                "below the critical temperature the bounds meet only after very many sweeps; {end}"
+            )));
+        }
+        Some(Doubt::Frustrated) => {}
     }
     let depth = (0..=TRIAL_DEPTH.min(limit))
         .rev()

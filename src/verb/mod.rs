@@ -2,4 +2,5 @@
 
 pub mod draw;
 pub mod examine;
+pub mod forecast;
 pub mod show;

@@ -59,7 +59,15 @@ fn answers_are_as_their_schemas_say() {
     let audit = bench.json(0, &["audit", "small.tar.zst"]);
     check("audit", &audit);
     assert_eq!(audit["conclusion"], "holds");
+    check(
+        "forecast",
+        &bench.json(0, &["forecast", "plan.toml", "--minutes", "0.05"]),
+    );
     bench.write("cold.toml", COLD);
+    check(
+        "forecast",
+        &bench.json(1, &["forecast", "cold.toml", "--minutes", "0.05"]),
+    );
     check("draw", &bench.json(6, &["draw", "cold.toml", "-o", "cold.tar.zst"]));
     check("show", &bench.json(6, &["show", "cold.tar.zst"]));
     let replay = bench.json(6, &["replay", "cold.tar.zst", "0/0"]);
@@ -85,6 +93,7 @@ fn errors_are_objects_too() {
             "request.exists",
         ),
         ("draw", 2, &["draw", "--nonsense"], "request.flags"),
+        ("forecast", 2, &["forecast", "absent.toml"], "request.missing"),
         ("replay", 2, &["replay", "small.tar.zst", "7/0"], "request.value"),
         ("show", 3, &["show", "plan.toml"], "archive.damaged"),
         ("audit", 3, &["audit", "plan.toml"], "archive.damaged"),

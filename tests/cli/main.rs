@@ -2,6 +2,7 @@
 
 mod bench;
 mod exits;
+mod forecast;
 mod interrupt;
 mod json;
 mod memory;

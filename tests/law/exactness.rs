@@ -332,7 +332,7 @@ pub fn windows_of(record: &Value) -> Vec<f64> {
 }
 
 /// All sites in the order in which a sweep decides them.
-fn order_of(law: &Law) -> Vec<u32> {
+pub fn order_of(law: &Law) -> Vec<u32> {
     let map = RandomMap::new(law).unwrap();
     map.classes().iter().flat_map(|class| class.sites()).collect()
 }

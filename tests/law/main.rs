@@ -2,8 +2,10 @@
 
 mod agreement;
 mod agreement_compact;
+mod coupling_times;
 mod exactness;
 mod faults;
+mod forecast;
 mod physics;
 mod properties;
 mod statistics;

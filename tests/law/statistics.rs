@@ -1,7 +1,7 @@
 //! Tests of samples against a known law, and how often they may raise a false alarm.
 //!
 //! Every statistical check of this test program goes through [`Verdict`] and one level, [`LEVEL`]. There
-//! are at most [`MOST_CHECKS`] of them (78 now), so that a correct program fails with probability at most 1e-5
+//! are at most [`MOST_CHECKS`] of them (92 now), so that a correct program fails with probability at most 1e-5
 //! (union bound; seeds are fixed, so it fails always or never). A planted fault must fall below the
 //! same level in the same check.
 

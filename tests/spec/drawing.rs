@@ -4,12 +4,13 @@ use std::path::Path;
 use std::time::Duration;
 
 use pastproof::archive::wire;
+use pastproof::clock::Clock;
 use pastproof::engine::Stop;
 use pastproof::engine::crew::Settings;
 use pastproof::observer::Silent;
 use pastproof::plan::Plan;
 use pastproof::quantity::Seed;
-use pastproof::verb::draw::{Clock, Existing, Request, draw};
+use pastproof::verb::draw::{Existing, Request, draw};
 
 use crate::members::Members;
 
@@ -33,6 +34,10 @@ impl Clock for Still {
     }
 
     fn elapsed(&self) -> Duration {
+        Duration::ZERO
+    }
+
+    fn busy(&self) -> Duration {
         Duration::ZERO
     }
 }

@@ -13,6 +13,7 @@ const MAY_IMPORT: &[(&str, &[&str])] = &[
     // 0 words
     ("quantity", &[]),
     ("observer", &[]),
+    ("clock", &[]),
     ("error", &["quantity"]),
     ("canonical", &["quantity", "error"]),
     ("number", &["error"]),
@@ -38,6 +39,7 @@ const MAY_IMPORT: &[(&str, &[&str])] = &[
     ),
     ("observable", &["number", "lattice", "law", "sample"]),
     ("exact", &["error", "number", "lattice", "law"]),
+    ("statistics", &[]),
     // 3 record: bytes on disk; knows no engine
     (
         "archive",
@@ -83,6 +85,7 @@ const MAY_IMPORT: &[(&str, &[&str])] = &[
         &[
             "quantity",
             "observer",
+            "clock",
             "error",
             "canonical",
             "number",
@@ -97,6 +100,7 @@ const MAY_IMPORT: &[(&str, &[&str])] = &[
             "engine",
             "observable",
             "exact",
+            "statistics",
             "archive",
         ],
     ),

@@ -13,7 +13,16 @@ use super::{Terminal, Tone, visible};
 /// The least time between two plain lines.
 const INTERVAL: Duration = Duration::from_secs(10);
 
-/// The progress of one drawing; the bar goes when it is dropped.
+/// What a task counts.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub enum Unit {
+    /// Samples, at a rate that tells how long the rest will take.
+    Samples,
+    /// Seconds of a time that is set.
+    Seconds,
+}
+
+/// The progress of one task; the bar goes when it is dropped.
 pub struct Progress<'terminal> {
     terminal: &'terminal Terminal,
     shown: Shown,
@@ -25,11 +34,11 @@ enum Shown {
 }
 
 impl<'terminal> Progress<'terminal> {
-    pub(super) fn new(terminal: &'terminal Terminal, total: u64, watched: bool) -> Self {
+    pub(super) fn new(terminal: &'terminal Terminal, total: u64, unit: Unit, watched: bool) -> Self {
         let shown = if watched {
-            Shown::Bar(bar(total))
+            Shown::Bar(bar(total, unit))
         } else {
-            Shown::Lines(Mutex::new(Lines::new(total, Instant::now())))
+            Shown::Lines(Mutex::new(Lines::new(total, unit, Instant::now())))
         };
         Self { terminal, shown }
     }
@@ -41,7 +50,7 @@ impl<'terminal> Progress<'terminal> {
         }
     }
 
-    /// Names the ensemble that is drawn now.
+    /// Names the ensemble that is worked on now.
     pub fn ensemble(&self, label: &str) {
         let label = visible(label).replace('\n', " ");
         match &self.shown {
@@ -50,12 +59,12 @@ impl<'terminal> Progress<'terminal> {
         }
     }
 
-    /// Counts `samples` more.
-    pub fn advance(&self, samples: u64) {
+    /// Counts so many more.
+    pub fn advance(&self, count: u64) {
         match &self.shown {
-            Shown::Bar(bar) => bar.inc(samples),
+            Shown::Bar(bar) => bar.inc(count),
             Shown::Lines(lines) => {
-                let line = locked(lines).advance(samples, Instant::now());
+                let line = locked(lines).advance(count, Instant::now());
                 if let Some(line) = line {
                     self.terminal.note(Tone::Plain, &line);
                 }
@@ -77,18 +86,22 @@ fn locked(lines: &Mutex<Lines>) -> MutexGuard<'_, Lines> {
     lines.lock().unwrap_or_else(PoisonError::into_inner)
 }
 
-fn bar(total: u64) -> ProgressBar {
+fn bar(total: u64, unit: Unit) -> ProgressBar {
     let bar = ProgressBar::new(total);
-    bar.set_style(style());
+    bar.set_style(style(unit));
     // time left goes on while one long sample is drawn
     bar.enable_steady_tick(Duration::from_millis(500));
     bar
 }
 
 /// # Panics
-/// Never: the template is fixed and tested.
-fn style() -> ProgressStyle {
-    ProgressStyle::with_template("{msg:!24} {wide_bar} {pos}/{len} samples, {rate}/s, {eta} left")
+/// Never: the templates are fixed and tested.
+fn style(unit: Unit) -> ProgressStyle {
+    let template = match unit {
+        Unit::Samples => "{msg:!24} {wide_bar} {pos}/{len} samples, {rate}/s, {eta} left",
+        Unit::Seconds => "{msg:!24} {wide_bar} {pos}/{len} seconds",
+    };
+    ProgressStyle::with_template(template)
         .expect("a well-formed template")
         .with_key("rate", |state: &ProgressState, text: &mut dyn std::fmt::Write| {
             let _ = text.write_str(&rate(state.per_sec()));
@@ -99,6 +112,7 @@ fn style() -> ProgressStyle {
 /// Plain lines, where a bar would only fill a log.
 struct Lines {
     total: u64,
+    unit: Unit,
     done: u64,
     label: String,
     started: Instant,
@@ -106,9 +120,10 @@ struct Lines {
 }
 
 impl Lines {
-    fn new(total: u64, now: Instant) -> Self {
+    fn new(total: u64, unit: Unit, now: Instant) -> Self {
         Self {
             total,
+            unit,
             done: 0,
             label: String::new(),
             started: now,
@@ -117,8 +132,8 @@ impl Lines {
     }
 
     /// The line to write now, if it is time for one.
-    fn advance(&mut self, samples: u64, now: Instant) -> Option<String> {
-        self.done = self.done.saturating_add(samples);
+    fn advance(&mut self, count: u64, now: Instant) -> Option<String> {
+        self.done = self.done.saturating_add(count);
         if now.saturating_duration_since(self.spoke) < INTERVAL {
             return None;
         }
@@ -128,12 +143,15 @@ impl Lines {
 
     fn line(&self, elapsed: Duration) -> String {
         let (total, done) = (self.total, self.done.min(self.total));
-        let per_second = done as f64 / elapsed.as_secs_f64().max(1e-9);
-        let left = (total - done) as f64 / per_second;
-        let mut line = format!("{done} of {total} samples, {}/s", rate(per_second));
-        if let Ok(left) = Duration::try_from_secs_f64(left) {
-            line += &format!(", about {} left", span(left));
-        }
+        let mut line = match self.unit {
+            Unit::Seconds => format!("{done} of {total} seconds"),
+            Unit::Samples => {
+                let per_second = done as f64 / elapsed.as_secs_f64().max(1e-9);
+                let left = Duration::try_from_secs_f64((total - done) as f64 / per_second);
+                let left = left.map_or(String::new(), |left| format!(", about {} left", span(left)));
+                format!("{done} of {total} samples, {}/s{left}", rate(per_second))
+            }
+        };
         if !self.label.is_empty() {
             line += &format!(", {}", self.label);
         }
@@ -174,7 +192,7 @@ mod tests {
     #[test]
     fn a_line_at_most_every_ten_seconds() {
         let start = Instant::now();
-        let mut lines = Lines::new(10_000, start);
+        let mut lines = Lines::new(10_000, Unit::Samples, start);
         lines.label = "ensemble 3".to_string();
         assert_eq!(lines.advance(100, after(start, 0)), None);
         assert_eq!(lines.advance(100, after(start, 9)), None);
@@ -191,14 +209,24 @@ mod tests {
     }
 
     #[test]
+    fn seconds_of_a_set_time_have_no_rate() {
+        let start = Instant::now();
+        let mut lines = Lines::new(60, Unit::Seconds, start);
+        lines.label = "ensemble 3".to_string();
+        let line = lines.advance(12, after(start, 12));
+        assert_eq!(line.as_deref(), Some("12 of 60 seconds, ensemble 3"));
+        let _ = style(Unit::Seconds);
+    }
+
+    #[test]
     fn odd_counts_do_no_harm() {
         let start = Instant::now();
-        let mut lines = Lines::new(0, start);
+        let mut lines = Lines::new(0, Unit::Samples, start);
         assert_eq!(
             lines.advance(0, after(start, 10)).as_deref(),
             Some("0 of 0 samples, 0.000/s")
         );
-        let mut lines = Lines::new(5, start);
+        let mut lines = Lines::new(5, Unit::Samples, start);
         assert_eq!(
             lines.advance(0, after(start, 10)).as_deref(),
             Some("0 of 5 samples, 0.000/s")
@@ -259,7 +287,7 @@ mod tests {
     fn the_bar_fits_its_line() {
         let screen = Screen::default();
         let target = ProgressDrawTarget::term_like(Box::new(screen.clone()));
-        let bar = ProgressBar::with_draw_target(Some(1_000_000), target).with_style(style());
+        let bar = ProgressBar::with_draw_target(Some(1_000_000), target).with_style(style(Unit::Samples));
         bar.set_message("an ensemble whose label is much too long for a line");
         bar.set_position(250_000);
         bar.force_draw();

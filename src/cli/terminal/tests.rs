@@ -169,7 +169,7 @@ fn colours_only_for_those_who_want_them() {
 #[test]
 fn progress_counts_from_any_thread_and_lets_go_of_the_bar() {
     let (terminal, out, err) = terminal(Output::Json);
-    let progress = terminal.progress(8);
+    let progress = terminal.progress(8, Unit::Samples);
     progress.ensemble("film");
     std::thread::scope(|scope| {
         for _ in 0..4 {
