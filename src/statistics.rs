@@ -185,7 +185,7 @@ impl Fit {
     /// The same for a system that is `step` as long, if times grow with this exponent.
     #[must_use]
     pub fn grown(&self, step: f64, exponent: f64) -> Self {
-        let factor = exp(exponent * ln(step));
+        let factor = power(step, exponent);
         let laws = self
             .laws
             .iter()
@@ -282,6 +282,11 @@ fn ln_between(law: &Law, above: u64, up_to: u64) -> f64 {
         return ln(law.beyond(above) - law.beyond(up_to));
     }
     high + ln(-(low - high).exp_m1())
+}
+
+/// base^exponent, for a positive base.
+pub fn power(base: f64, exponent: f64) -> f64 {
+    exp(exponent * ln(base))
 }
 
 /// The harmonic number H(x) = 1 + 1/2 + ... + 1/x for real x > 0: psi(x + 1) + Euler's constant, by the

@@ -73,7 +73,7 @@ fn numbers_are_those_of_the_law() {
     let count: f64 = words[1].parse().unwrap();
     assert!((180.0..=420.0).contains(&count) && words[0] == "about", "{obstacle}");
     let enough: u8 = words.last().unwrap().parse().unwrap();
-    assert!((8..=10).contains(&enough), "{obstacle}");
+    assert!((7..=10).contains(&enough), "{obstacle}");
 }
 
 /// Far below the critical temperature, and frustrated: said at once, with what to do instead, exit code 1. A hot
@@ -99,7 +99,8 @@ fn what_cannot_finish_is_not_advisable() {
         "> a lower bound: no trial of the pilot met",
         "not shown:",
     ] {
-        assert!(told.out.contains(part), "{part}\n{}", told.out);
+        let text = told.out.split_whitespace().collect::<Vec<_>>().join(" ");
+        assert!(text.contains(part), "{part}\n{}", told.out);
     }
     assert!(!told.out.contains("next: pastproof draw"), "{}", told.out);
     let json = bench.json(1, &["forecast", "plan.toml"]);
@@ -124,21 +125,18 @@ fn what_cannot_finish_is_not_advisable() {
     assert!(middle(&json["ensembles"][0]["core_hours"]) > 0.0);
 }
 
-/// An ordered phase that no closed form tells of: simple cubic at beta = 0.5, where coupling times on 4 and 8 sites
-/// an axis differ by more than any critical exponent.
+/// An ordered phase that no closed form tells of: simple cubic at beta = 0.3 (critical: 0.2217).
 #[test]
-fn an_ordered_phase_is_told_by_its_growth() {
+fn an_ordered_phase_is_told_by_its_slowness() {
     let bench = Bench::new();
-    let changes = [("[4, 4]", "[16, 16, 16]"), ("0.2, \"0.30\"", "0.3")];
+    let changes = [("[4, 4]", "[10, 10, 10]"), ("0.2, \"0.30\"", "0.3")];
     bench.write("plan.toml", &plan(&changes));
     let told = bench.json(1, &["forecast", "plan.toml", "--minutes", "0.3"]);
-    let ensemble = &told["ensembles"][0];
-    let steep = ensemble["obstacles"]
-        .as_array()
-        .unwrap()
-        .iter()
-        .any(|one| one["code"] == "steep");
-    assert!(steep, "{ensemble}");
+    assert_eq!(told["ensembles"][0]["obstacles"][0]["code"], "slow", "{told}");
+    assert!(
+        told["pilot_seconds"].as_f64().unwrap() < 17.0,
+        "no time is spent once it is clear: {told}"
+    );
 }
 
 /// A critical film that no pilot of seconds can sample: extrapolated from smaller ones, with the exponent near 2.2, and
@@ -219,11 +217,7 @@ fn wrong_requests_have_code_2() {
         &plan(&[("[4, 4]", "[4, 4, 4]"), ("[0.2, \"0.30\"]", "\"critical\"")]),
     );
     let refused = bench.expect(2, &["forecast", "no.toml"]);
-    assert!(
-        refused.err.contains("no.toml: line 5: ensemble 0: beta"),
-        "{}",
-        refused.err
-    );
+    assert!(refused.err.contains("no.toml: line 8: beta"), "{}", refused.err);
 }
 
 /// Ctrl-C ends it with code 5 and says so.

@@ -69,7 +69,7 @@ fn forward_times_are_coupling_times_and_are_fitted() {
                 .collect();
             fit(&what, &cut, times.iter().map(window)).must_pass();
 
-            // a pilot's worth of them
+            // a pilot's worth of them: a share of 64 has a standard error of 0.06 at most
             let fitted = Fit::new(&times[..64], law.lattice().sites().into()).unwrap();
             let exact = record["mean_sweeps"].as_f64().unwrap();
             let estimate = fitted.estimate(TimeLaw::mean);
@@ -81,7 +81,7 @@ fn forward_times_are_coupling_times_and_are_fitted() {
             for k in (0..windows.len()).filter(|k| rest.contains(&beyond(*k))) {
                 let found = fitted.beyond(1 << k);
                 assert!(
-                    (found - beyond(k)).abs() < 0.08,
+                    (found - beyond(k)).abs() < 0.15,
                     "{what}: beyond 2^{k} {}, fitted {found}",
                     beyond(k)
                 );

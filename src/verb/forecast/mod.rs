@@ -28,7 +28,7 @@ use crate::random_map::{Doubt, RandomMap};
 use crate::sample::DEEPEST;
 use crate::statistics::{Estimate, Fit, Law};
 
-use self::smaller::Smaller;
+use self::smaller::{Findings, Smaller};
 use self::trials::{Around, Prices, Trials, Turn};
 
 /// What a forecast does not show.
@@ -275,7 +275,9 @@ struct Pilot<'a> {
     number: EnsembleIndex,
     ensemble: &'a Ensemble,
     trials: Trials,
+    /// What smaller lattices say, and one on which bounds stay apart longer than at a critical point.
     smaller: Option<Smaller>,
+    slow: Option<(Vec<u32>, u8)>,
     doubt: Option<Doubt>,
     lanes: u64,
     /// Seconds to make the map.
@@ -293,6 +295,7 @@ impl<'a> Pilot<'a> {
             ensemble,
             trials: Trials::default(),
             smaller: None,
+            slow: None,
             doubt: None,
             lanes: 1,
             setup: 0.0,
@@ -328,9 +331,15 @@ impl<'a> Pilot<'a> {
             self.is_settled = self.trials.is_enough();
         } else if self.doubt.is_some() {
             self.is_settled = true;
-        } else {
-            drop(crew);
-            self.smaller = smaller::smaller(law, around, end)?.or(self.smaller.take());
+        } else if let Some((failed, _)) = self.trials.failed {
+            self.slow = smaller::slow(law.lattice(), failed);
+            if self.slow.is_none() {
+                drop(crew);
+                let Findings { grown, slow } = smaller::smaller(law, around, end)?;
+                self.smaller = grown.or(self.smaller.take());
+                self.slow = slow;
+            }
+            self.is_settled = self.slow.is_some();
         }
         Ok(())
     }

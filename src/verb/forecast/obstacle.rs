@@ -33,6 +33,13 @@ pub enum Obstacle {
         /// Sites that change.
         sites: u64,
     },
+    /// Bounds stay apart longer than at a critical point, here or on a smaller lattice.
+    Slow {
+        /// Its extents.
+        extents: Vec<u32>,
+        /// The deepest attempt that failed.
+        failed: u8,
+    },
     /// Coupling times grow faster with the lattice than at a critical point.
     Steep {
         /// The exponent in the extent.
@@ -73,12 +80,16 @@ pub(super) fn of(ensemble: &Ensemble, pilot: &Pilot<'_>, fit: Option<&Fit>) -> V
             });
         }
     }
-    if let (0, Some(smaller)) = (pilot.trials.met(), &pilot.smaller) {
-        if smaller.is_steep() {
-            found.push(Obstacle::Steep {
-                exponent: smaller.exponent,
-            });
-        }
+    if pilot.trials.met() == 0 {
+        let slow = pilot
+            .slow
+            .clone()
+            .map(|(extents, failed)| Obstacle::Slow { extents, failed });
+        let steep = pilot.smaller.as_ref().filter(|smaller| smaller.is_steep());
+        let steep = steep.map(|smaller| Obstacle::Steep {
+            exponent: smaller.exponent,
+        });
+        found.extend(slow.or(steep));
     }
     if let Some(fit) = fit {
         let unfinished = |depth: u8| samples as f64 * fit.beyond(1 << depth);
@@ -100,6 +111,7 @@ impl Obstacle {
         match self {
             Self::Cold { .. } => "cold",
             Self::Frustrated { .. } => "frustrated",
+            Self::Slow { .. } => "slow",
             Self::Steep { .. } => "steep",
             Self::DepthLimit { .. } => "depth_limit",
         }
@@ -120,7 +132,7 @@ impl Obstacle {
                  temperature (weaker couplings, a lower activity), hold more sites, or take a smaller system. The \
                  random-cluster representation is no way around this."
             }
-            Self::Steep { .. } => {
+            Self::Slow { .. } | Self::Steep { .. } => {
                 "so it is in an ordered phase, where the sweeps that heat bath of sites needs grow exponentially with \
                  the lattice. Raise the temperature (lower the activity), or take a smaller lattice."
             }
@@ -145,6 +157,15 @@ impl fmt::Display for Obstacle {
                 "it is frustrated, and after 2^{failed} sweeps the pilot's bounds were still apart at {apart} of \
                  {sites} sites"
             ),
+            Self::Slow { extents, failed } => {
+                let extents: Vec<String> = extents.iter().map(ToString::to_string).collect();
+                write!(
+                    f,
+                    "on {} the pilot's bounds had not met after 2^{failed} sweeps, many times what a critical lattice \
+                     of that extent takes",
+                    extents.join(" x ")
+                )
+            }
             Self::Steep { exponent } => write!(
                 f,
                 "coupling times grow with the extent to the power {exponent:.1}, faster than at a critical point"
