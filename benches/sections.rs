@@ -55,6 +55,7 @@ fn samples<'t>(team: &'t Team<'t>) -> Measure<'t> {
 fn column(width: Width) -> (&'static str, Option<f64>) {
     match width {
         Width::Portable => ("portable", Some(2.0)),
+        Width::Sse2 => ("SSE2", None),
         Width::Neon => ("NEON", None),
         Width::Avx2 => ("AVX2", None),
         Width::Avx512 => ("AVX-512", Some(5.0)),

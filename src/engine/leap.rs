@@ -65,7 +65,7 @@ impl Chains {
         ([&mut self.low, &mut self.high], step)
     }
 
-    /// The next words, [`FIRST`] or [`AHEAD`], in a few runs side by side.
+    /// The next words, as many as are made ahead, in a few runs side by side.
     #[inline(always)]
     pub fn fill(&mut self, out: &mut [u64]) {
         let run = out.len() / FEW;
@@ -155,7 +155,7 @@ impl Leap {
         words
     }
 
-    /// Makes sure that `count` words wait: at most [`LEFT`].
+    /// Makes sure that `count` words wait: not more than may be left over.
     #[inline(always)]
     pub fn make_ready<L: Lanes>(&mut self, count: usize) {
         if self.at + count > self.end {
